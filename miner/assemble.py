@@ -1,0 +1,218 @@
+"""From a study's tables to its calendar and panel, with what was set aside on the way."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from miner.errors import SettingsError, TableError, explain
+from miner.panel import (
+    Events,
+    Labels,
+    Panel,
+    Spans,
+    as_peers,
+    distinct_events,
+    label_sessions,
+    pack_alerts,
+    pack_coverage,
+)
+from miner.read_tables import Log, SpanTable, read_coverage, read_groups, read_log
+from miner.session_calendar import SessionCalendar, build_calendar
+from miner.settings import Study
+
+MOST_LABELS = 32_000
+
+
+@dataclass(frozen=True)
+class CodedLog:
+    """Rows of a log that are inside the study: int32 arrays of one length, repeats and all.
+
+    ``n_outside`` rows lay outside the calendar, ``n_unknown`` were about entities that the
+    groups and coverage tables do not know; both are set aside.
+    """
+
+    entity: np.ndarray
+    type: np.ndarray
+    session: np.ndarray
+    n_outside: int
+    n_unknown: int
+
+
+@dataclass(frozen=True)
+class Inputs:
+    """What a study's tables hold, on its calendar."""
+
+    study: Study
+    calendar: SessionCalendar
+    panel: Panel
+    targets: tuple[str, ...]
+    alerts: CodedLog
+    events: CodedLog
+    event_names: tuple[str, ...]
+    counts: dict[str, dict[str, int]]
+    midnight: dict[str, tuple[int, int]]
+    set_aside: pd.DataFrame
+    fingerprints: dict[str, str]
+
+
+def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> Inputs:
+    """Read a study's tables and put them on its calendar.
+
+    Raises
+    ------
+    TableError, CalendarError, SettingsError : the study or one of its tables cannot be used
+    """
+    progress("reading alerts")
+    alert_log = read_log(study, "alerts")
+    progress("reading events")
+    event_log = read_log(study, "events")
+    groups, coverage = read_groups(study), read_coverage(study)
+    stamps = [log.stamp_us for log in (alert_log, event_log) if log.stamp_us.size]
+    if not stamps:
+        raise TableError(
+            explain(study.name, "alerts and events", "hold at least one row", "none",
+                    "Check the source paths and the column names.")
+        )  # fmt: skip
+    calendar = build_calendar(
+        study, min(int(s.min()) for s in stamps), max(int(s.max()) for s in stamps)
+    )
+    n_sessions = len(calendar.dates)
+
+    progress("placing on sessions")
+    tables = [table for table in (groups, coverage) if table is not None]
+    known = tables or [alert_log, event_log]
+    entity_names = tuple(sorted({name for table in known for name in _used_names(table)}))
+    alerts = _code(alert_log, entity_names, calendar)
+    events = _code(event_log, entity_names, calendar)
+    targets = _targets(study, event_log.type_names)
+    panel = Panel(
+        entity_names,
+        alert_log.type_names,
+        n_sessions,
+        pack_alerts(
+            alerts.entity, alerts.type, alerts.session, len(entity_names),
+            len(alert_log.type_names), n_sessions,
+        ),
+        {target: _events_of(events, event_log.type_names.index(target)) for target in targets},
+        *pack_coverage(
+            _spans(coverage, "type", entity_names, calendar) if coverage else None,
+            len(entity_names), alert_log.type_names, n_sessions,
+        ),
+        *_groups(study, groups, entity_names, calendar),
+    )  # fmt: skip
+    read = {"alerts": alert_log, "events": event_log, "groups": groups, "coverage": coverage}
+    counts = {
+        name: {"rows": table.rows_read, "unreadable": len(table.set_aside)}
+        for name, table in read.items()
+        if table is not None
+    }
+    for name, log, names in (
+        ("alerts", alerts, alert_log.type_names), ("events", events, event_log.type_names)
+    ):  # fmt: skip
+        counts[name] |= {"outside calendar": log.n_outside, "unknown entity": log.n_unknown}
+        counts[name]["used"] = log.entity.size
+        counts[name]["repeats"] = log.entity.size - _n_distinct(log, len(names), n_sessions)
+    aside = [t.set_aside for t in read.values() if t is not None and len(t.set_aside)]
+    return Inputs(
+        study, calendar, panel, targets, alerts, events, event_log.type_names, counts,
+        {
+            name: (log.midnight_count, log.stamp_us.size)
+            for name, log in (("alerts", alert_log), ("events", event_log))
+        },
+        pd.concat(aside, ignore_index=True) if aside else alert_log.set_aside.iloc[:0],
+        {path: digest for t in read.values() if t is not None for path, digest in t.fingerprints.items()},
+    )  # fmt: skip
+
+
+def _used_names(table: Log | SpanTable) -> list[str]:
+    return [table.entity_names[i] for i in np.unique(table.entity_code)]
+
+
+def _n_distinct(log: CodedLog, n_types: int, n_sessions: int) -> int:
+    key = (log.entity.astype(np.int64) * n_types + log.type) * n_sessions + log.session
+    return int(np.unique(key).size)
+
+
+def _code_map(names: tuple[str, ...], known: tuple[str, ...]) -> np.ndarray:
+    """Place in ``known`` of each name, -1 where it is not there."""
+    place = {name: i for i, name in enumerate(known)}
+    return np.array([place.get(name, -1) for name in names] or [-1], dtype=np.int32)
+
+
+def _code(log: Log, entity_names: tuple[str, ...], calendar: SessionCalendar) -> CodedLog:
+    entity = _code_map(log.entity_names, entity_names)[log.entity_code]
+    session = calendar.session_of(log.stamp_us, log.is_bare_date)
+    is_inside = (session >= 0) & (session < len(calendar.dates))
+    is_known = entity >= 0
+    kept = is_inside & is_known
+    return CodedLog(
+        entity[kept], log.type_code[kept], session[kept],
+        int((~is_inside).sum()), int((is_inside & ~is_known).sum()),
+    )  # fmt: skip
+
+
+def _events_of(events: CodedLog, code: int) -> Events:
+    mine = events.type == code
+    return distinct_events(events.entity[mine], events.session[mine])
+
+
+def _targets(study: Study, names: tuple[str, ...]) -> tuple[str, ...]:
+    wanted = study.events.targets
+    if wanted is None:
+        return names
+    missing = [target for target in wanted if target not in names]
+    if missing:
+        raise SettingsError(
+            explain("[events] targets", ", ".join(missing), "be types of the event log",
+                    f"types {', '.join(names[:20]) or 'none'}",
+                    "Correct the spelling, or leave targets out to hunt for every type.")
+        )  # fmt: skip
+    return tuple(sorted(set(wanted)))
+
+
+def _spans(
+    table: SpanTable, label: str, entity_names: tuple[str, ...], calendar: SessionCalendar
+) -> Spans:
+    first = calendar.span_start(table.start_us, table.start_is_bare)
+    last = calendar.span_end(table.end_us, table.end_is_bare)
+    entity = _code_map(table.entity_names, entity_names)[table.entity_code]
+    first = np.maximum(first, 0)
+    last = np.minimum(last, len(calendar.dates) - 1)
+    kept = (first <= last) & (entity >= 0)
+    return Spans(
+        entity[kept], first[kept], last[kept], table.label_codes[label][kept], table.label_names[label]
+    )
+
+
+def _groups(
+    study: Study, groups: SpanTable | None, entity_names: tuple[str, ...], calendar: SessionCalendar
+) -> tuple[Labels | None, Labels]:
+    n_entities, n_sessions = len(entity_names), len(calendar.dates)
+    labelled: dict[str, Labels] = {}
+    if groups is not None and study.groups is not None:
+        for column in {study.groups.strata, study.groups.peers} - {None}:
+            spans = _spans(groups, column, entity_names, calendar)
+            if len(spans.names) > MOST_LABELS:
+                raise TableError(
+                    explain("groups", column, f"have at most {MOST_LABELS:,} values",
+                            f"{len(spans.names):,}", "Name a coarser column.")
+                )  # fmt: skip
+            labelled[column] = _without_empty(label_sessions(spans, n_entities, n_sessions))
+        strata = labelled.get(study.groups.strata)
+        peers = labelled.get(study.groups.peers, strata)
+        return strata, as_peers(peers, n_entities, n_sessions)
+    return None, as_peers(None, n_entities, n_sessions)
+
+
+def _without_empty(labels: Labels) -> Labels:
+    """An empty label means no label."""
+    if "" not in labels.names:
+        return labels
+    blank = labels.names.index("")
+    code = np.array([-1 if i == blank else i - (i > blank) for i in range(len(labels.names))])
+    code_et = np.where(labels.code_et >= 0, code[labels.code_et], -1).astype(np.int16)
+    return Labels(tuple(name for name in labels.names if name), code_et)

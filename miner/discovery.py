@@ -1,0 +1,149 @@
+"""Discovery: every case's candidates, judged by the margins null and adjusted over the family."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from miner import workers
+from miner.adjust import benjamini_hochberg, benjamini_yekutieli, step_down_min_p
+from miner.event_windows import types_before_events
+from miner.kernels import hits as hit_kernels
+from miner.kernels import tails
+from miner.nulls.exchanges import Exchanger
+from miner.nulls.margins import ROWS_A_BLOCK, Margins, fit_margins, judge_hits
+from miner.proposals import count_windows, propose
+from miner.units import Case
+
+TIE = 1e-4  # drawn log p-values are kept in single precision
+
+
+@dataclass(frozen=True)
+class Found:
+    """A case with its family judged. Arrays are over the family (``case.unit.triggers``).
+
+    Attributes
+    ----------
+    n_proposed : int, combinations frequent before events, in the family or not
+    is_proposed : bool [family]
+    margins, rates : the fitted null, and its rate at every trigger
+    hits, expected, variance, p : observed hits and what the null says; p = 1 if not proposed
+    """
+
+    case: Case
+    n_proposed: int
+    is_proposed: np.ndarray
+    margins: Margins
+    rates: np.ndarray
+    hits: np.ndarray
+    expected: np.ndarray
+    variance: np.ndarray
+    p: np.ndarray
+
+    @property
+    def rows(self) -> np.ndarray:
+        """Family rows of the candidates: proposed and in the family."""
+        return np.flatnonzero(self.is_proposed)
+
+    @property
+    def size(self) -> int:
+        """Size of the case's family."""
+        return self.is_proposed.size
+
+
+def find(
+    case: Case,
+    *,
+    min_hits: int,
+    max_size: int,
+    start: Margins | None = None,
+    by_mining: bool = True,
+    n_workers: int = 1,
+) -> Found:
+    """Propose combinations from the pre-event windows and judge them by the margins null.
+
+    Parameters
+    ----------
+    start : margins of a similar case, to begin the fit from
+    by_mining : False counts the family's members over the windows instead of mining them, with
+        the same result for the family; ``n_proposed`` then counts family members only
+    """
+    combos = case.unit.triggers.combos
+    is_seen_vk = types_before_events(case)
+    if by_mining:
+        proposals = propose(is_seen_vk, min_hits, max_size)
+        is_proposed = np.array([combo in proposals for combo in combos], dtype=bool)
+        n_proposed = len(proposals)
+    else:
+        is_proposed = count_windows(is_seen_vk, combos) >= min_hits
+        n_proposed = int(is_proposed.sum())
+    table = case.unit.triggers
+    margins = fit_margins(
+        case.unit.is_open_et, case.is_window_et, case.unit.segment.panel.peers, start, n_workers
+    )
+    rates = margins.rates(table.entity, table.session)
+    everything = np.ones(rates.size, dtype=bool)
+    every_row = np.arange(len(combos))
+    _, hits, expected, variance = hit_kernels.tally(
+        every_row, table.offset_c, rates, case.is_hit, everything
+    )
+    p = np.ones(len(combos))
+    rows = np.flatnonzero(is_proposed)
+    p[rows] = judge_hits(rows, table.offset_c, rates, hits[rows], everything, n_workers)
+    return Found(case, n_proposed, is_proposed, margins, rates, hits, expected, variance, p)
+
+
+class Adjuster:
+    """One adjustment over the whole family of a run: all targets and strata together.
+
+    ``adjust`` is "bh", "by" or "westfall-young"; the last needs drawn p-values
+    (``draw_log_p``), in the order of ``found``.
+    """
+
+    def __init__(
+        self, found: Sequence[Found], adjust: str, log_p_cr: Sequence[np.ndarray] | None = None
+    ) -> None:
+        self.sizes = [f.size for f in found]
+        self.family = sum(self.sizes)
+        self.adjust = adjust
+        self._null_cr = None if log_p_cr is None else np.concatenate(log_p_cr)
+
+    def adjusted(self, p: Sequence[np.ndarray], adjust: str | None = None) -> list[np.ndarray]:
+        """Adjusted p-values, case by case, of p-values given case by case over the family."""
+        joined = np.concatenate(p)
+        how = adjust or self.adjust
+        if self.family == 0:
+            result = joined
+        elif how == "bh":
+            result = benjamini_hochberg(joined, self.family)
+        elif how == "by":
+            result = benjamini_yekutieli(joined, self.family)
+        elif self._null_cr is not None:
+            result = step_down_min_p(np.log(joined), self._null_cr, TIE)
+        else:
+            raise ValueError("westfall-young needs draws")
+        return np.split(result, np.cumsum(self.sizes)[:-1])
+
+    @property
+    def has_draws(self) -> bool:
+        """Whether westfall-young can be asked for."""
+        return self._null_cr is not None
+
+
+def draw_log_p(found: Found, n_draws: int, seed: int, n_workers: int = 1) -> np.ndarray:
+    """log p of every family member in worlds with exchanged sessions: float32 [family, draws]."""
+    table = found.case.unit.triggers
+    hits_cr = Exchanger(found.case, seed, "joint").hits(n_draws, n_workers).T
+
+    def rank(block: tuple[int, int]) -> np.ndarray:
+        part = slice(*block)
+        rows = np.arange(*block)
+        return tails.log_tail_ranks(
+            rows, table.offset_c, found.rates, np.ascontiguousarray(hits_cr[part])
+        )
+
+    blocks = workers.blocks(found.size, ROWS_A_BLOCK)
+    empty = np.empty((0, n_draws), dtype=np.float32)
+    return np.concatenate([empty, *workers.in_order(rank, blocks, n_workers)])

@@ -1,0 +1,258 @@
+"""The Poisson-binomial distribution: the number of successes of unequal independent trials."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from miner.kernels.compiling import kernel
+
+TINY = 1e-300
+EXACT_WORK = 4_000_000  # trials x states up to which a tail is summed exactly
+
+
+@kernel
+def exact_tail(q, least):
+    """P(X >= least) for X the sum of Bernoulli(q[i]), by adding one trial at a time.
+
+    All terms are positive, so the relative error stays near rounding however small the tail is.
+    """
+    if least <= 0:
+        return 1.0
+    if least > q.size:
+        return 0.0
+    p_x = np.zeros(least)
+    p_x[0] = 1.0
+    tail = 0.0
+    low = 0  # states below `low` have underflowed
+    high = 0
+    for i in range(q.size):
+        r = q[i]
+        if high == least - 1:
+            tail += r * p_x[high]
+            top = high
+        else:
+            top = high + 1
+            high = top
+        for x in range(top, low, -1):
+            p_x[x] = p_x[x] * (1.0 - r) + p_x[x - 1] * r
+        p_x[low] *= 1.0 - r
+        while low < high and p_x[low] < TINY:
+            p_x[low] = 0.0
+            low += 1
+    return min(1.0, tail)
+
+
+@kernel
+def cumulants(q, s):
+    """K(s), K'(s), K''(s), K'''(s), K''''(s) of the sum of Bernoulli(q[i]), tilted by s."""
+    grow = math.exp(s)
+    k0 = k1 = k2 = k3 = k4 = 0.0
+    for i in range(q.size):
+        m = 1.0 - q[i] + q[i] * grow
+        p = q[i] * grow / m
+        v = p * (1.0 - p)
+        k0 += math.log(m)
+        k1 += p
+        k2 += v
+        k3 += v * (1.0 - 2.0 * p)
+        k4 += v * (1.0 - 6.0 * v)
+    return k0, k1, k2, k3, k4
+
+
+@kernel
+def saddlepoint_tail(q, least):
+    """P(X >= least) by the lattice saddlepoint series to second order.
+
+    Lugannani & Rice (1980), the lattice form with its second term as in Daniels (1987),
+    "Tail probability approximations", section 6. ``least`` lies strictly between the sure
+    successes and the possible ones.
+    """
+    s = 0.0
+    low, high = -50.0, 50.0
+    for _ in range(200):
+        _, k1, k2, _, _ = cumulants(q, s)
+        miss = k1 - least
+        if abs(miss) < 1e-10 * max(1.0, least):
+            break
+        if miss > 0:
+            high = s
+        else:
+            low = s
+        s -= miss / k2
+        if not low < s < high:
+            s = 0.5 * (low + high)
+    k0, _, k2, k3, k4 = cumulants(q, s)
+    if abs(s) < 1e-3:
+        # at the mean: Edgeworth to the same order, with the half-unit lattice correction
+        _, mean, var, third, _ = cumulants(q, 0.0)
+        z = (least - 0.5 - mean) / math.sqrt(var)
+        skew = third / var**1.5
+        density = math.exp(-0.5 * z * z) / math.sqrt(2.0 * math.pi)
+        return 0.5 * math.erfc(z / math.sqrt(2.0)) + density * skew * (z * z - 1.0) / 6.0
+    depth = s * least - k0
+    w = math.sqrt(2.0 * max(depth, 0.0)) * (1.0 if s > 0 else -1.0)
+    u = (1.0 - math.exp(-s)) * math.sqrt(k2)
+    skew, kurt = k3 / k2**1.5, k4 / k2**2
+    a = 1.0 - math.exp(-s)
+    # derivatives of 1 / (1 - exp(-s)), in units of the tilted standard deviation
+    first = math.exp(-s) / a / math.sqrt(k2)
+    second = (math.exp(-s) * (1.0 + math.exp(-s)) / (a * a)) / k2
+    correction = (kurt / 8.0 - 5.0 * skew * skew / 24.0) - skew * first / 2.0 - second / 2.0
+    correction = (correction / u) + 1.0 / w**3
+    log_density = -depth - 0.5 * math.log(2.0 * math.pi)
+    normal_tail = 0.5 * math.erfc(w / math.sqrt(2.0))
+    if w > 30.0:
+        # beyond the range of erfc: Mills' ratio, the two large terms cancelled by hand
+        x = w * w
+        bracket = -1.0 / w**3 * (1.0 - 3.0 / x + 15.0 / x**2) + 1.0 / u + correction
+        return math.exp(log_density) * bracket
+    tail = normal_tail + math.exp(log_density) * (1.0 / u - 1.0 / w + correction)
+    return min(1.0, max(0.0, tail))
+
+
+@kernel
+def upper_tail(q, least):
+    """P(X >= least): summed exactly where that is affordable, else by the saddlepoint."""
+    if q.size * least <= EXACT_WORK:
+        return exact_tail(q, least)
+    n_sure = 0
+    n_possible = 0
+    for i in range(q.size):
+        n_sure += q[i] >= 1.0
+        n_possible += q[i] > 0.0
+    if least <= n_sure:
+        return 1.0
+    if least > n_possible:
+        return 0.0
+    if least == n_possible:
+        return exact_tail(q[q > 0.0], least)
+    return saddlepoint_tail(q, least)
+
+
+@kernel
+def tail_table(q, first, last):
+    """P(X >= x) for x = first .. last: float64 [last - first + 1].
+
+    Exact where affordable. Otherwise saddlepoint tails on a grid, joined log-linearly: monotone,
+    which is what ranking draws needs, and not meant to be read as a p-value.
+    """
+    table = np.empty(last - first + 1)
+    if q.size * (last + 1) <= EXACT_WORK:
+        p_x = np.zeros(last + 1)
+        p_x[0] = 1.0
+        tail = 0.0  # mass above `last`
+        high = 0
+        for i in range(q.size):
+            r = q[i]
+            if high == last:
+                tail += r * p_x[high]
+                top = high
+            else:
+                top = high + 1
+                high = top
+            for x in range(top, 0, -1):
+                p_x[x] = p_x[x] * (1.0 - r) + p_x[x - 1] * r
+            p_x[0] *= 1.0 - r
+        for x in range(last, first - 1, -1):
+            tail += p_x[x]
+            table[x - first] = min(1.0, tail)
+        return table
+    step = max(1, (last - first) // 32)
+    x = first
+    table[0] = upper_tail(q, first)
+    while x < last:
+        nxt = min(last, x + step)
+        table[nxt - first] = upper_tail(q, nxt)
+        low, high = math.log(max(table[x - first], TINY)), math.log(max(table[nxt - first], TINY))
+        for y in range(x + 1, nxt):
+            table[y - first] = math.exp(low + (high - low) * (y - x) / (nxt - x))
+        x = nxt
+    return table
+
+
+@kernel
+def log_tail_ranks(row, offset_c, q, hits_cr):
+    """log P(X >= hits) for the drawn hits of each combination: float32 [rows, draws].
+
+    ``hits_cr`` int32 [rows, draws]. The rates are the observed world's: a common yardstick that
+    makes draws of different combinations comparable.
+    """
+    n_rows, n_draws = hits_cr.shape
+    log_p_cr = np.zeros((n_rows, n_draws), dtype=np.float32)
+    for i in range(n_rows):
+        first = np.int64(hits_cr[i].min())
+        last = np.int64(hits_cr[i].max())
+        if last == 0:
+            continue
+        table = tail_table(q[offset_c[row[i]] : offset_c[row[i] + 1]], first, last)
+        for x in range(table.size):
+            table[x] = math.log(max(table[x], TINY))
+        for r in range(n_draws):
+            log_p_cr[i, r] = table[hits_cr[i, r] - first]
+    return log_p_cr
+
+
+@kernel
+def tilt(q, log_odds):
+    """Rates whose odds are ``exp(log_odds)`` times those of ``q``; 0 and 1 stay."""
+    grow = math.exp(log_odds)
+    return q * grow / (1.0 - q + q * grow)
+
+
+@kernel
+def solve_tilt(q, total):
+    """The log odds ratio that makes the rates add up to ``total``, and the variance there.
+
+    ``total`` lies strictly between 0 and the number of rates, all of which lie inside (0, 1).
+    Returns ``log_odds, sum of q (1 - q)`` at the solution.
+    """
+    s = 0.0
+    low, high = -60.0, 60.0
+    for _ in range(200):
+        total_now = 0.0
+        spread = 0.0
+        grow = math.exp(s)
+        for i in range(q.size):
+            p = q[i] * grow / (1.0 - q[i] + q[i] * grow)
+            total_now += p
+            spread += p * (1.0 - p)
+        miss = total_now - total
+        if abs(miss) < 1e-12 * max(1.0, total):
+            break
+        if miss > 0:
+            high = s
+        else:
+            low = s
+        s -= miss / spread
+        if not low < s < high:
+            s = 0.5 * (low + high)
+    return s, spread
+
+
+@kernel
+def sharper_p_value(q_rest, hits_rest, q_own, hits_own, node, weight):
+    """Chance of at least ``hits_own`` hits, were the odds ratio that of the rest.
+
+    The ratio of the rest's odds to the null's is estimated from ``q_rest`` (its rates under the
+    null) and ``hits_rest``, and carried to ``q_own`` with its uncertainty: the tail is averaged
+    over a normal law of the log ratio by Gauss-Hermite quadrature (``node, weight`` for the weight
+    exp(-x^2)). 1.0 where the rest says nothing.
+    """
+    is_inside = (q_rest > 0.0) & (q_rest < 1.0)
+    inside = q_rest[is_inside]
+    n = inside.size
+    if n == 0:
+        return 1.0
+    # sure cells say nothing of the ratio: they and their hits are left out
+    n_sure = np.sum(q_rest >= 1.0)
+    total = float(hits_rest - n_sure)
+    total = min(max(total, 0.5), n - 0.5)
+    log_odds, spread = solve_tilt(inside, total)
+    scale = math.sqrt(2.0 / spread)
+    p = 0.0
+    for i in range(node.size):
+        log_odds_i = min(60.0, max(-60.0, log_odds + scale * node[i]))
+        p += weight[i] * upper_tail(tilt(q_own, log_odds_i), hits_own)
+    return min(1.0, p / math.sqrt(math.pi))

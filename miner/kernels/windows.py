@@ -1,0 +1,50 @@
+"""Event windows: which sessions an event follows, and which alert types came before it."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from miner.kernels.bits import any_in_range
+from miner.kernels.compiling import kernel
+
+
+@kernel
+def mark_windows(event_entity, event_session, n_entities, n_sessions, horizon):
+    """Boolean [entities, sessions]: an event of the entity lies in ``[t + 1, t + horizon]``."""
+    is_window_et = np.zeros((n_entities, n_sessions), dtype=np.bool_)
+    for v in range(event_entity.size):
+        s = event_session[v]
+        for t in range(max(0, s - horizon), s):
+            is_window_et[event_entity[v], t] = True
+    return is_window_et
+
+
+@kernel
+def types_before(event_entity, event_session, alert_ekw, reach):
+    """Boolean [events, types]: the type alerted in the ``reach`` sessions before the event's own."""
+    n_types = alert_ekw.shape[1]
+    is_seen_vk = np.zeros((event_entity.size, n_types), dtype=np.bool_)
+    for v in range(event_entity.size):
+        s = event_session[v]
+        for k in range(n_types):
+            is_seen_vk[v, k] = any_in_range(alert_ekw[event_entity[v], k], max(0, s - reach), s)
+    return is_seen_vk
+
+
+@kernel
+def slots(is_open_et, group_et, horizon):
+    """Peer group under which an event on each session would be felt, -1 where it would not.
+
+    Session s of an entity is in reach when some open cell lies in ``[s - horizon, s - 1]``; the
+    latest such cell gives the group. Returns int16 [entities, sessions].
+    """
+    n_entities, n_sessions = is_open_et.shape
+    slot_et = np.full((n_entities, n_sessions), -1, dtype=np.int16)
+    for e in range(n_entities):
+        latest = -(1 << 30)
+        for s in range(1, n_sessions):
+            if is_open_et[e, s - 1]:
+                latest = s - 1
+            if s - latest <= horizon:
+                slot_et[e, s] = group_et[e, latest]
+    return slot_et

@@ -1,0 +1,60 @@
+"""Proposals: combinations frequent among pre-event windows. The only importer of mlxtend."""
+
+from __future__ import annotations
+
+import warnings
+
+import numpy as np
+import pandas as pd
+
+from miner.triggers import Combo
+
+MANY_WINDOWS = 200_000
+
+
+def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo, int]:
+    """Combinations seen in at least ``min_hits`` windows, with their number of windows.
+
+    Parameters
+    ----------
+    is_seen_vk : bool [windows, types]
+
+    The miner turns a share back into a count and loses sets that lie exactly on it; half a window
+    less keeps them all.
+    """
+    n_windows = is_seen_vk.shape[0]
+    if n_windows < min_hits:
+        return {}
+    from mlxtend.frequent_patterns import fpgrowth, hmine
+
+    mine = hmine if n_windows > MANY_WINDOWS else fpgrowth
+    # rare types cannot be part of a frequent set and only slow the search
+    kept = np.flatnonzero(is_seen_vk.sum(axis=0) >= min_hits)
+    if kept.size == 0:
+        return {}
+    frame = pd.DataFrame(is_seen_vk[:, kept], columns=kept)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        found = mine(frame, min_support=(min_hits - 0.5) / n_windows, max_len=max_size, use_colnames=True)
+    counts = np.rint(found["support"].to_numpy() * n_windows).astype(np.int64)
+    return {
+        tuple(sorted(int(k) for k in itemset)): int(count)
+        for itemset, count in zip(found["itemsets"], counts, strict=True)
+    }
+
+
+def count_windows(is_seen_vk: np.ndarray, combos: tuple[Combo, ...]) -> np.ndarray:
+    """Number of windows that hold each of the given combinations: int64 [combinations].
+
+    The same counts as ``propose`` for combinations known beforehand, on packed bits; drawn worlds
+    use it, where only members of the family can matter.
+    """
+    packed_kw = np.packbits(is_seen_vk.T, axis=1)
+    counts = np.zeros(len(combos), dtype=np.int64)
+    shared: dict[Combo, np.ndarray] = {}
+    for c, combo in enumerate(combos):
+        head = combo[:-1]
+        if head not in shared:
+            shared[head] = np.bitwise_and.reduce(packed_kw[list(head)], axis=0, initial=255)
+        counts[c] = np.bitwise_count(shared[head] & packed_kw[combo[-1]]).sum()
+    return counts

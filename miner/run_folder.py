@@ -1,0 +1,108 @@
+"""A run's folder: written aside and renamed when complete, so that one that exists is whole."""
+
+from __future__ import annotations
+
+import json
+import math
+import os
+import shutil
+import tempfile
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+
+from miner.errors import OutputError, explain
+
+if TYPE_CHECKING:
+    from miner.hunt import Hunt
+
+FLOATS = "%.10g"
+
+
+def check_free(folder: Path, replace: bool) -> None:
+    """Refuse early what could not be written at the end.
+
+    Raises
+    ------
+    OutputError : the folder exists and may not be replaced, or its place cannot be written
+    """
+    if folder.exists() and not replace:
+        raise OutputError(
+            explain("output", str(folder), "not exist yet", "a folder that does",
+                    "Name another folder, or allow replacing this one (--replace)")
+        )  # fmt: skip
+    if folder.exists() and not (folder / "run.json").is_file() and any(folder.iterdir()):
+        raise OutputError(
+            explain("output", str(folder), "be the folder of a run to be replaced",
+                    "a folder without run.json", "Name another folder.")
+        )  # fmt: skip
+    try:
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        writable = os.access(folder.parent, os.W_OK)
+    except OSError:
+        writable = False
+    if not writable:
+        raise OutputError(
+            explain("output", str(folder.parent), "be a folder that can be written",
+                    "one that cannot", "Name a folder elsewhere.")
+        )  # fmt: skip
+
+
+def write(result: Hunt, folder: Path, replace: bool = False) -> None:
+    """Write all files of a hunt's result and put them in place in one step.
+
+    Raises
+    ------
+    OutputError : the files cannot be written; nothing is left behind
+    """
+    check_free(folder, replace)
+    aside = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
+    try:
+        aside.chmod(0o777 & ~_umask())
+        _write_table(result.candidates, aside / "candidates.csv")
+        result.candidates.to_parquet(aside / "candidates.parquet", index=False)
+        _write_table(result.rules, aside / "rules.csv")
+        _write_table(result.quarters, aside / "quarters.csv")
+        _write_table(result.walk_forward, aside / "walk_forward.csv")
+        if result.plain_shuffle is not None:
+            _write_table(result.plain_shuffle, aside / "plain_shuffle.csv")
+        if len(result.set_aside):
+            _write_table(result.set_aside, aside / "set_aside.csv")
+        text = json.dumps(_plain(result.record), indent=1, ensure_ascii=False, allow_nan=False)
+        (aside / "run.json").write_text(text + "\n", encoding="utf-8")
+        if folder.exists():
+            old = Path(tempfile.mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
+            folder.rename(old / folder.name)
+            aside.rename(folder)
+            shutil.rmtree(old)
+        else:
+            aside.rename(folder)
+    except OSError as error:
+        raise OutputError(
+            explain("output", str(folder), "be writable", f"the system's error: {error.strerror}",
+                    "Free some space or name a folder elsewhere.")
+        ) from error  # fmt: skip
+    finally:
+        shutil.rmtree(aside, ignore_errors=True)
+
+
+def _umask() -> int:
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask
+
+
+def _write_table(table: pd.DataFrame, path: Path) -> None:
+    table.to_csv(path, index=False, float_format=FLOATS, lineterminator="\n")
+
+
+def _plain(value: Any) -> Any:
+    """JSON has no NaN: undefined numbers become null."""
+    if isinstance(value, dict):
+        return {str(key): _plain(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(item) for item in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

@@ -1,0 +1,127 @@
+"""The whole search on one segment: family, candidates, explaining away; and on drawn worlds."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+from miner import workers
+from miner.chosen import ChosenRule
+from miner.discovery import Adjuster, Found, draw_log_p, find
+from miner.explain_away import Explanation, explain_away
+from miner.nulls.exchanges import Exchanger
+from miner.settings import Study
+from miner.time_split import DiscoverySlice
+from miner.triggers import find_family
+from miner.units import Case, make_case, make_unit, stratum_codes
+
+
+@dataclass(frozen=True)
+class Search:
+    """What discovery found: one ``Found`` a target and stratum, and the rules over all of them."""
+
+    found: tuple[Found, ...]
+    adjuster: Adjuster
+    explanation: Explanation
+
+    def chosen(self) -> list[ChosenRule]:
+        """The rules as the holdout takes them, in the order found."""
+        chosen = []
+        for rule in self.explanation.rules:
+            case = self.found[rule.case].case
+            table = case.unit.triggers
+            base = None if rule.sharpens is None else self.explanation.rules[rule.sharpens].row
+            chosen.append(
+                ChosenRule(
+                    case.target, case.unit.stratum, case.unit.code, table.combos[rule.row],
+                    float(case.hits_c[rule.row] / table.count_c[rule.row]),
+                    None if base is None else table.combos[base],
+                )
+            )  # fmt: skip
+        return chosen
+
+
+def cases_of(
+    segment: DiscoverySlice, targets: Sequence[str], study: Study, n_workers: int = 1
+) -> list[Case]:
+    """Every target in every stratum, with the family of each stratum."""
+    windows, mining = study.windows, study.mining
+    codes = stratum_codes(segment.panel, study.groups is not None and study.groups.pooled)
+    families = find_family(
+        segment, codes, lookback=windows.lookback, horizon=windows.horizon, rest=windows.rest,
+        max_size=mining.max_size, min_triggers=mining.min_triggers, n_workers=n_workers,
+    )  # fmt: skip
+    units = [
+        make_unit(
+            segment, name, code, families[name], lookback=windows.lookback,
+            horizon=windows.horizon, rest=windows.rest,
+        )
+        for name, code in codes.items()
+    ]  # fmt: skip
+    return [
+        make_case(target, unit, segment.panel.events[target]) for target in targets for unit in units
+    ]
+
+
+def search(
+    segment: DiscoverySlice,
+    targets: Sequence[str],
+    study: Study,
+    *,
+    with_draws: bool = True,
+    progress: Callable[[str], None] = lambda _: None,
+    n_workers: int = 1,
+) -> Search:
+    """Find the rules of a segment.
+
+    Parameters
+    ----------
+    with_draws : draw exchanged worlds, so that westfall-young can be shown beside the chosen
+        adjustment (always done where it is the chosen one)
+    """
+    mining, testing = study.mining, study.testing
+    progress("triggers of every combination")
+    cases = cases_of(segment, targets, study, n_workers)
+    progress("hits against the margins null")
+    found = [
+        find(case, min_hits=mining.min_hits, max_size=mining.max_size, n_workers=n_workers)
+        for case in cases
+    ]
+    draws = None
+    if testing.permutations and (with_draws or testing.adjust == "westfall-young"):
+        progress("exchanging sessions")
+        draws = [draw_log_p(f, testing.permutations, testing.seed, n_workers) for f in found]
+    adjuster = Adjuster(found, testing.adjust, draws)
+    progress("explaining away")
+    explanation = explain_away(
+        found, adjuster, fdr=testing.fdr, min_triggers=mining.min_triggers, n_workers=n_workers
+    )
+    return Search(tuple(found), adjuster, explanation)
+
+
+def placebo_rules(real: Search, study: Study, n_workers: int = 1) -> list[int]:
+    """Number of rules the same search finds in each of ``study.testing.placebo`` drawn worlds.
+
+    A drawn world exchanges sessions between events of one peer group, case by case; triggers and
+    family do not change with it, and its margins are refitted from the real ones.
+    """
+    n_worlds = study.testing.placebo
+    mining = study.mining
+    drawn = [
+        list(Exchanger(f.case, study.testing.seed, "placebo").worlds(n_worlds)) for f in real.found
+    ]
+
+    def count(world: int) -> int:
+        found = [
+            find(
+                make_case(f.case.target, f.case.unit, drawn[i][world]), min_hits=mining.min_hits,
+                max_size=mining.max_size, start=f.margins, by_mining=False,
+            )
+            for i, f in enumerate(real.found)
+        ]  # fmt: skip
+        explanation = explain_away(
+            found, real.adjuster, fdr=study.testing.fdr, min_triggers=mining.min_triggers
+        )
+        return len(explanation.rules)
+
+    return workers.in_order(count, range(n_worlds), n_workers)

@@ -1,0 +1,148 @@
+"""The tables of a settings file: their keys, types and defaults."""
+
+from __future__ import annotations
+
+import datetime as dt
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, ConfigDict, Field
+
+from .values import Clock, Day, Name, Names, Share, Source, Zone, is_url, whole
+
+Kind = Literal["weekdays", "daily", "dates", "exchange"]
+
+
+class Section(BaseModel):
+    """One table of the settings: strict types, no unknown keys, unchangeable."""
+
+    model_config = ConfigDict(strict=True, frozen=True, extra="forbid")
+
+
+class NameSettings(Section):
+    """[study]."""
+
+    name: Name
+
+
+class TableSettings(Section):
+    """Where a table comes from: a path or glob, or a database URL with a query."""
+
+    source: Source
+    query: Name | None = None
+    columns: dict[str, Name] = Field(default_factory=dict)
+    bad_rows: Literal["error", "set-aside"] = "error"
+
+    @property
+    def is_database(self) -> bool:
+        """Whether the source is a database URL."""
+        return is_url(self.source)
+
+
+class EventSettings(TableSettings):
+    """[events]; `targets` None means every event type, each its own target."""
+
+    targets: Names | None = None
+
+
+class GroupSettings(TableSettings):
+    """[groups]; `peers` falls back to `strata`, None means one group of all."""
+
+    strata: Name | None = None
+    pooled: bool = False
+    peers: Name | None = Field(default_factory=lambda done: done["strata"])
+
+    @property
+    def label_columns(self) -> tuple[str, ...]:
+        """The label columns in use, each once."""
+        return tuple(dict.fromkeys(c for c in (self.strata, self.peers) if c is not None))
+
+
+def _kind(calendar: str) -> Kind:
+    if calendar == "weekdays" or calendar == "daily":
+        return calendar
+    return "dates" if calendar.lower().endswith(".csv") else "exchange"
+
+
+def _default_close(done: dict[str, Any]) -> dt.time | None:
+    return None if _kind(done["calendar"]) == "exchange" else dt.time(16)
+
+
+def _default_zone(done: dict[str, Any]) -> str | None:
+    return None if _kind(done["calendar"]) == "exchange" else "UTC"
+
+
+class SessionSettings(Section):
+    """[sessions]; for an exchange code `close` and `timezone` None mean the exchange's own."""
+
+    calendar: Name = "weekdays"
+    close: Clock | None = Field(default_factory=_default_close)
+    timezone: Zone | None = Field(default_factory=_default_zone)
+    start: Day | None = None
+    end: Day | None = None
+
+    @property
+    def kind(self) -> Kind:
+        """What `calendar` names: a rule, a csv of dates, or an exchange code."""
+        return _kind(self.calendar)
+
+
+class WindowSettings(Section):
+    """[windows], all in sessions."""
+
+    lookback: Annotated[int, whole(1)] = 5
+    horizon: Annotated[int, whole(1)] = 5
+    rest: Annotated[int, whole(0)] = Field(default_factory=lambda done: done["horizon"])
+
+
+class MiningSettings(Section):
+    """[mining]."""
+
+    max_size: Annotated[int, whole(1, 6)] = 3
+    min_triggers: Annotated[int, whole(1)] = 20
+    min_hits: Annotated[int, whole(1)] = 3
+
+
+class TestingSettings(Section):
+    """[testing]; `shuffle` is the number of draws of the plain shuffle, shown to compare."""
+
+    __test__ = False  # pytest would take the name for a test class
+
+    adjust: Literal["bh", "by", "westfall-young"] = "bh"
+    fdr: Share = 0.05
+    permutations: Annotated[int, whole(0)] = 2000
+    placebo: Annotated[int, whole(0)] = 20
+    shuffle: Annotated[int, whole(0)] = 0
+    seed: Annotated[int, whole(0)] = 7
+
+
+class HoldoutSettings(Section):
+    """[holdout]; exactly one of `start` and `share` is set. `folds` is for the walk-forward."""
+
+    start: Day | None = None
+    share: Share | None = Field(default_factory=lambda done: None if done["start"] else 0.3)
+    embargo: Annotated[int, whole(0)] = 10
+    alpha: Share = 0.05
+    folds: Annotated[int, whole(0)] = 4
+
+
+SECTIONS: dict[str, type[Section]] = {
+    "study": NameSettings,
+    "alerts": TableSettings,
+    "events": EventSettings,
+    "groups": GroupSettings,
+    "coverage": TableSettings,
+    "prices": TableSettings,
+    "sessions": SessionSettings,
+    "windows": WindowSettings,
+    "mining": MiningSettings,
+    "testing": TestingSettings,
+    "holdout": HoldoutSettings,
+}
+OPTIONAL_SECTIONS = frozenset({"groups", "coverage", "prices"})
+TABLE_COLUMNS: dict[str, tuple[str, ...]] = {
+    "alerts": ("entity", "time", "type", "score"),
+    "events": ("entity", "time", "type", "score"),
+    "groups": ("entity", "start", "end"),
+    "coverage": ("entity", "type", "start", "end"),
+    "prices": ("entity", "date", "open", "high", "low", "close", "volume"),
+}

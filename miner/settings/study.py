@@ -1,0 +1,158 @@
+"""The whole study: load it, check it, and hand on one frozen record."""
+
+from __future__ import annotations
+
+import tomllib
+from collections.abc import Mapping
+from dataclasses import dataclass, fields
+from pathlib import Path
+from typing import Any
+
+from ..errors import SettingsError, explain
+from .checks import (
+    Problems,
+    check_holdout,
+    check_sessions,
+    check_table,
+    check_testing,
+    read_section,
+)
+from .sections import (
+    SECTIONS,
+    EventSettings,
+    GroupSettings,
+    HoldoutSettings,
+    MiningSettings,
+    NameSettings,
+    Section,
+    SessionSettings,
+    TableSettings,
+    TestingSettings,
+    WindowSettings,
+)
+from .values import nearest, redact_url
+
+
+@dataclass(frozen=True)
+class Study:
+    """One study's settings, every default filled in. `path` is None for a study from a dict."""
+
+    path: Path | None
+    folder: Path
+    name: str
+    alerts: TableSettings
+    events: EventSettings
+    groups: GroupSettings | None
+    coverage: TableSettings | None
+    prices: TableSettings | None
+    sessions: SessionSettings
+    windows: WindowSettings
+    mining: MiningSettings
+    testing: TestingSettings
+    holdout: HoldoutSettings
+    warnings: tuple[str, ...] = ()
+
+    def as_dict(self) -> dict[str, Any]:
+        """Return the settings ready for JSON, laid out as in the file, URLs redacted."""
+        out: dict[str, Any] = {"study": {"name": self.name}}
+        for item in fields(self):
+            section = getattr(self, item.name)
+            if isinstance(section, Section):
+                out[item.name] = section.model_dump(mode="json", exclude_none=True)
+            if isinstance(section, TableSettings):
+                out[item.name]["source"] = redact_url(section.source)
+        return out
+
+
+def load_study(path: str | Path) -> Study:
+    """Read and check a settings file.
+
+    Raises `SettingsError`, one line per problem, all problems at once.
+    """
+    path = Path(path)
+
+    def refuse(rule: str, found: str, advice: str) -> SettingsError:
+        return SettingsError(explain(str(path), "file", rule, found, advice))
+
+    try:
+        raw = tomllib.loads(path.read_text(encoding="utf-8-sig"))
+    except OSError as error:
+        found = error.strerror or type(error).__name__
+        raise refuse("be a settings file", found, "Check the path.") from error
+    except UnicodeDecodeError as error:
+        raise refuse("be UTF-8 text", "other bytes", "Save it as UTF-8.") from error
+    except tomllib.TOMLDecodeError as error:
+        advice = 'Text goes in quotes: name = "text".'
+        raise refuse("be valid TOML", f"an error: {error}", advice) from error
+    return _build(raw, str(path), path, path.parent, path.stem)
+
+
+def study_from_dict(d: Mapping[str, Any], folder: str | Path) -> Study:
+    """Check settings given as nested dicts, laid out as study.toml; None means "left out".
+
+    Paths are relative to `folder`. Raises `SettingsError` as `load_study` does.
+    """
+    return _build(d, "settings", None, Path(folder), "study")
+
+
+def _build(raw: Mapping[str, Any], where: str, path: Path | None, folder: Path, stem: str) -> Study:
+    problems = Problems(where)
+    for key in raw:
+        if key not in SECTIONS:
+            advice = nearest(key, SECTIONS)
+            problems.add("settings", "hold known tables only", f"`[{key}]`", advice)
+    # the two defaults that hang on something outside their own section
+    raw = {
+        **raw,
+        "study": _with_default(raw.get("study"), "name", stem),
+        "holdout": _with_default(raw.get("holdout"), "embargo", _reach(raw.get("windows"))),
+    }
+    parts = {name: read_section(name, raw.get(name), problems) for name in SECTIONS}
+    for name, part in parts.items():
+        if isinstance(part, TableSettings):
+            check_table(name, part, problems)
+    sessions, windows, holdout, testing = (
+        parts[name] or SECTIONS[name]() for name in ("sessions", "windows", "holdout", "testing")
+    )
+    assert isinstance(sessions, SessionSettings) and isinstance(windows, WindowSettings)
+    assert isinstance(holdout, HoldoutSettings) and isinstance(testing, TestingSettings)
+    check_sessions(sessions, problems)
+    check_holdout(holdout, sessions, windows, problems)
+    check_testing(testing, problems)
+    if problems.lines:
+        raise SettingsError("\n".join(problems.lines))
+    named = parts.pop("study")
+    assert isinstance(named, NameSettings)
+    values: dict[str, Any] = dict(parts)
+    study = Study(path, folder, named.name, **values)
+    return Study(path, folder, named.name, **values, warnings=_warnings(study))
+
+
+def _with_default(section: Any, key: str, value: Any) -> Any:
+    if section is None:
+        return {key: value}
+    if isinstance(section, Mapping) and section.get(key) is None:
+        return {**section, key: value}
+    return section
+
+
+def _reach(windows: Any) -> int:
+    """Return horizon + lookback, with the default 5 for what is missing or wrong."""
+    given = windows if isinstance(windows, Mapping) else {}
+    sizes = (given.get("horizon"), given.get("lookback"))
+    return sum(size if type(size) is int and size > 0 else 5 for size in sizes)
+
+
+def _warnings(study: Study) -> tuple[str, ...]:
+    found = []
+    windows, groups = study.windows, study.groups
+    if windows.rest < windows.horizon:
+        found.append(
+            f"[windows] rest = {windows.rest} is below horizon = {windows.horizon}: windows "
+            "overlap, one event can be counted twice, and p-values lose their meaning."
+        )
+    if groups is not None and groups.pooled and groups.strata is None:
+        found.append("[groups] pooled = true changes nothing without strata.")
+    if study.prices is not None:
+        found.append("[prices] is not used by the hunt.")
+    return tuple(found)

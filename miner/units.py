@@ -1,0 +1,147 @@
+"""Units of a hunt: one stratum of one segment, and a target's events in it (observed or drawn)."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from miner.columns import POOLED
+from miner.kernels import bits, hits, windows
+from miner.panel import Events, Panel
+from miner.time_split import Segment
+from miner.triggers import Combo, TriggerTable
+
+
+def stratum_codes(panel: Panel, pooled: bool) -> dict[str, int | None]:
+    """Strata hunted in, by name: the labels', and all entities together if ``pooled`` or alone."""
+    if panel.strata is None:
+        return {POOLED: None}
+    codes: dict[str, int | None] = {name: code for code, name in enumerate(panel.strata.names)}
+    if pooled:
+        codes[POOLED] = None
+    return codes
+
+
+@dataclass(frozen=True)
+class Unit:
+    """One stratum of a segment, without any event: shared by all targets and drawn worlds.
+
+    Attributes
+    ----------
+    is_open_et : bool [entities, sessions], cells of the stratum that may be judged and are
+        covered for at least one type
+    triggers : the combinations at hand with their eligible triggers
+    """
+
+    stratum: str
+    code: int | None
+    segment: Segment
+    lookback: int
+    horizon: int
+    rest: int
+    is_open_et: np.ndarray
+    triggers: TriggerTable
+
+    @cached_property
+    def slot_et(self) -> np.ndarray:
+        """int16 [entities, sessions]: peer group an event would be felt in, -1 where in none."""
+        return windows.slots(self.is_open_et, self.segment.panel.peers.code_et, self.horizon)
+
+    def classes_of(self, combo: Combo) -> tuple[int, ...]:
+        """Coverage classes that a combination needs."""
+        return tuple(sorted({int(self.segment.panel.class_k[k]) for k in combo}))
+
+    def is_eligible_et(self, classes: tuple[int, ...]) -> np.ndarray:
+        """bool [entities, sessions]: open cells covered in every one of the classes."""
+        panel = self.segment.panel
+        cover_ew = np.bitwise_and.reduce(panel.cover_eqw[:, list(classes)], axis=1)
+        return bits.unpack(cover_ew, panel.n_sessions) & self.is_open_et
+
+
+def make_unit(
+    segment: Segment,
+    stratum: str,
+    code: int | None,
+    triggers: TriggerTable,
+    *,
+    lookback: int,
+    horizon: int,
+    rest: int,
+) -> Unit:
+    """The unit of one stratum (``code`` in ``panel.strata``; None: all entities together)."""
+    panel = segment.panel
+    cover_ew = np.bitwise_or.reduce(panel.cover_eqw, axis=1)
+    is_open_et = bits.unpack(cover_ew, panel.n_sessions)
+    is_open_et[:, : max(segment.first, lookback - 1)] = False
+    is_open_et[:, max(0, segment.last - horizon + 1) :] = False
+    if code is not None and panel.strata is not None:
+        is_open_et &= panel.strata.code_et == code
+    return Unit(stratum, code, segment, lookback, horizon, rest, is_open_et, triggers)
+
+
+@dataclass(frozen=True)
+class Case:
+    """A unit with one target's events, observed or drawn.
+
+    Attributes
+    ----------
+    events : int32 (entity, session), sorted, distinct, each in reach of an open cell
+    is_window_et : bool [entities, sessions], an event of the entity within the horizon after
+    is_hit : bool, one a trigger of ``unit.triggers``
+    """
+
+    target: str
+    unit: Unit
+    events: Events
+    is_window_et: np.ndarray
+    is_hit: np.ndarray
+
+    @property
+    def name(self) -> tuple[str, str]:
+        """Target and stratum."""
+        return self.target, self.unit.stratum
+
+    @cached_property
+    def hits_c(self) -> np.ndarray:
+        """Hits of each combination: int64 [combinations]."""
+        offset_c = self.unit.triggers.offset_c
+        total = np.concatenate([[0], np.cumsum(self.is_hit, dtype=np.int64)])
+        return total[offset_c[1:]] - total[offset_c[:-1]]
+
+
+def make_case(target: str, unit: Unit, events: Events) -> Case:
+    """Put events into a unit; those out of its reach are left out."""
+    entity, session = events
+    is_in_reach = unit.slot_et[entity, session] >= 0
+    entity, session = entity[is_in_reach], session[is_in_reach]
+    panel = unit.segment.panel
+    is_window_et = windows.mark_windows(
+        entity, session, panel.n_entities, panel.n_sessions, unit.horizon
+    )
+    is_hit = hits.look_up(unit.triggers.entity, unit.triggers.session, is_window_et)
+    return Case(target, unit, (entity, session), is_window_et, is_hit)
+
+
+def base_rates(case: Case) -> np.ndarray:
+    """Share of each combination's own eligible cells that are in an event window.
+
+    float64 [combinations], NaN where nothing is eligible.
+    """
+    unit = case.unit
+    panel = unit.segment.panel
+    sets = [unit.classes_of(combo) for combo in unit.triggers.combos]
+    distinct = sorted(set(sets))
+    if not distinct:
+        return np.empty(0)
+    class_sq = np.full((len(distinct), max(map(len, distinct))), -1, dtype=np.int64)
+    for i, classes in enumerate(distinct):
+        class_sq[i, : len(classes)] = classes
+    cells, in_window = bits.count_cells(
+        panel.cover_eqw, class_sq, bits.pack_flags(unit.is_open_et), bits.pack_flags(case.is_window_et)
+    )
+    rate = np.full(len(distinct), np.nan)
+    np.divide(in_window, cells, out=rate, where=cells > 0)
+    place = {classes: i for i, classes in enumerate(distinct)}
+    return rate[[place[classes] for classes in sets]]
