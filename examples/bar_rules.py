@@ -42,8 +42,13 @@ def read_bars() -> dict[str, pd.DataFrame]:
 
 
 def unusual(amounts: pd.DataFrame) -> tuple[pd.DataFrame, pd.DataFrame]:
-    """Where an amount exceeds its trailing 95th percentile, and where there is one to exceed."""
-    limits = amounts.shift(1).rolling(TRAILING_SESSIONS).quantile(1 - UNUSUAL_SHARE)
+    """Where an amount is unusual, and where there are enough sessions before it to tell.
+
+    The limit is the 13th largest amount of the 250 sessions before, an amount that occurred and
+    no interpolation: equal amounts then compare as equal.
+    """
+    trailing = amounts.shift(1).rolling(TRAILING_SESSIONS)
+    limits = trailing.quantile(1 - UNUSUAL_SHARE, interpolation="higher")
     is_known = limits.notna() & amounts.notna()
     return (amounts > limits) & is_known, is_known
 

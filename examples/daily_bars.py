@@ -2,7 +2,7 @@
 
     python examples/daily_bars.py [FOLDER]
 
-Data (`pip install 'miner[examples]'`)
+Data (`pip install 'combination-signal-miner[examples]'`)
     skfolio: adjusted closes of 20 companies, 1990-01-02 to 2022-12-28 (package licence
     BSD-3-Clause; its authors call the file stale and for examples only). All 20 were still
     large in 2022: survivors.
@@ -10,8 +10,8 @@ Data (`pip install 'miner[examples]'`)
     publisher, package licence BSD-3-Clause). FB's ten months are too few for the rules below.
     AAPL and MSFT are in both: closes from the first, the other bar columns from the second.
 
-Rules. "Unusual" means above the 95th percentile of the same quantity over the 250 sessions
-before; today is not among them, so nothing is known before its time.
+Rules. "Unusual" means among the largest 5 %: at most 12 of the 250 sessions before had the same
+quantity as large. Today is not among the 250, so nothing is known before its time.
     big rise, big fall   unusual absolute change of the close, by its sign
     big week             unusual absolute change of the close over five sessions
     up streak            the fourth close in a row above the one before; `down streak` likewise

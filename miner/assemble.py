@@ -74,9 +74,14 @@ def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> 
     stamps = [log.stamp_us for log in (alert_log, event_log) if log.stamp_us.size]
     if not stamps:
         raise TableError(
-            explain(study.name, "alerts and events", "hold at least one row", "none",
-                    "Check the source paths and the column names.")
-        )  # fmt: skip
+            explain(
+                study.name,
+                "alerts and events",
+                "hold at least one row",
+                "none",
+                "Check the source paths and the column names.",
+            )
+        )
     calendar = build_calendar(
         study, min(int(s.min()) for s in stamps), max(int(s.max()) for s in stamps)
     )
@@ -94,16 +99,22 @@ def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> 
         alert_log.type_names,
         n_sessions,
         pack_alerts(
-            alerts.entity, alerts.type, alerts.session, len(entity_names),
-            len(alert_log.type_names), n_sessions,
+            alerts.entity,
+            alerts.type,
+            alerts.session,
+            len(entity_names),
+            len(alert_log.type_names),
+            n_sessions,
         ),
         {target: _events_of(events, event_log.type_names.index(target)) for target in targets},
         *pack_coverage(
             _spans(coverage, "type", entity_names, calendar) if coverage else None,
-            len(entity_names), alert_log.type_names, n_sessions,
+            len(entity_names),
+            alert_log.type_names,
+            n_sessions,
         ),
         *_groups(study, groups, entity_names, calendar),
-    )  # fmt: skip
+    )
     read = {"alerts": alert_log, "events": event_log, "groups": groups, "coverage": coverage}
     counts = {
         name: {"rows": table.rows_read, "unreadable": len(table.set_aside)}
@@ -111,21 +122,34 @@ def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> 
         if table is not None
     }
     for name, log, names in (
-        ("alerts", alerts, alert_log.type_names), ("events", events, event_log.type_names)
-    ):  # fmt: skip
+        ("alerts", alerts, alert_log.type_names),
+        ("events", events, event_log.type_names),
+    ):
         counts[name] |= {"outside calendar": log.n_outside, "unknown entity": log.n_unknown}
         counts[name]["used"] = log.entity.size
         counts[name]["repeats"] = log.entity.size - _n_distinct(log, len(names), n_sessions)
     aside = [t.set_aside for t in read.values() if t is not None and len(t.set_aside)]
     return Inputs(
-        study, calendar, panel, targets, alerts, events, event_log.type_names, counts,
+        study,
+        calendar,
+        panel,
+        targets,
+        alerts,
+        events,
+        event_log.type_names,
+        counts,
         {
             name: (log.midnight_count, log.stamp_us.size)
             for name, log in (("alerts", alert_log), ("events", event_log))
         },
         pd.concat(aside, ignore_index=True) if aside else alert_log.set_aside.iloc[:0],
-        {path: digest for t in read.values() if t is not None for path, digest in t.fingerprints.items()},
-    )  # fmt: skip
+        {
+            path: digest
+            for t in read.values()
+            if t is not None
+            for path, digest in t.fingerprints.items()
+        },
+    )
 
 
 def _used_names(table: Log | SpanTable) -> list[str]:
@@ -150,9 +174,12 @@ def _code(log: Log, entity_names: tuple[str, ...], calendar: SessionCalendar) ->
     is_known = entity >= 0
     kept = is_inside & is_known
     return CodedLog(
-        entity[kept], log.type_code[kept], session[kept],
-        int((~is_inside).sum()), int((is_inside & ~is_known).sum()),
-    )  # fmt: skip
+        entity[kept],
+        log.type_code[kept],
+        session[kept],
+        int((~is_inside).sum()),
+        int((is_inside & ~is_known).sum()),
+    )
 
 
 def _events_of(events: CodedLog, code: int) -> Events:
@@ -167,10 +194,14 @@ def _targets(study: Study, names: tuple[str, ...]) -> tuple[str, ...]:
     missing = [target for target in wanted if target not in names]
     if missing:
         raise SettingsError(
-            explain("[events] targets", ", ".join(missing), "be types of the event log",
-                    f"types {', '.join(names[:20]) or 'none'}",
-                    "Correct the spelling, or leave targets out to hunt for every type.")
-        )  # fmt: skip
+            explain(
+                "[events] targets",
+                ", ".join(missing),
+                "be types of the event log",
+                f"types {', '.join(names[:20]) or 'none'}",
+                "Correct the spelling, or leave targets out to hunt for every type.",
+            )
+        )
     return tuple(sorted(set(wanted)))
 
 
@@ -184,7 +215,11 @@ def _spans(
     last = np.minimum(last, len(calendar.dates) - 1)
     kept = (first <= last) & (entity >= 0)
     return Spans(
-        entity[kept], first[kept], last[kept], table.label_codes[label][kept], table.label_names[label]
+        entity[kept],
+        first[kept],
+        last[kept],
+        table.label_codes[label][kept],
+        table.label_names[label],
     )
 
 
@@ -198,9 +233,14 @@ def _groups(
             spans = _spans(groups, column, entity_names, calendar)
             if len(spans.names) > MOST_LABELS:
                 raise TableError(
-                    explain("groups", column, f"have at most {MOST_LABELS:,} values",
-                            f"{len(spans.names):,}", "Name a coarser column.")
-                )  # fmt: skip
+                    explain(
+                        "groups",
+                        column,
+                        f"have at most {MOST_LABELS:,} values",
+                        f"{len(spans.names):,}",
+                        "Name a coarser column.",
+                    )
+                )
             labelled[column] = _without_empty(label_sessions(spans, n_entities, n_sessions))
         strata = labelled.get(study.groups.strata)
         peers = labelled.get(study.groups.peers, strata)

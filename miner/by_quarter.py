@@ -32,9 +32,13 @@ def by_quarter(
     windows = study.windows
     whole = Segment(panel, 0, panel.n_sessions - 1)
     judged = judge_rules(
-        whole, rules, lookback=windows.lookback, horizon=windows.horizon, rest=windows.rest,
+        whole,
+        rules,
+        lookback=windows.lookback,
+        horizon=windows.horizon,
+        rest=windows.rest,
         n_workers=n_workers,
-    )  # fmt: skip
+    )
     quarter_t = quarter_names(dates)
     parts = []
     for order, (rule, (unit, row)) in enumerate(zip(rules, judged, strict=True), start=1):
@@ -56,8 +60,17 @@ def by_quarter(
         sums.insert(0, "target", rule.target)
         sums.insert(0, "rule_order", order)
         parts.append(sums.reset_index().set_index("rule_order").reset_index())
-    columns = ["rule_order", "quarter", "target", "stratum", "combination", "triggers", "hits",
-               "precision", "expected_hits"]  # fmt: skip
+    columns = [
+        "rule_order",
+        "quarter",
+        "target",
+        "stratum",
+        "combination",
+        "triggers",
+        "hits",
+        "precision",
+        "expected_hits",
+    ]
     if not parts:
         return pd.DataFrame(columns=columns)
     return pd.concat(parts, ignore_index=True)[columns]

@@ -18,7 +18,9 @@ from miner.wording import combination_name
 PANDAS_TYPES = {"text": "str", "integer": "Int64", "number": "float64"}
 
 
-def candidates_table(found: Search, outcomes: Sequence[Outcome], n_workers: int = 1) -> pd.DataFrame:
+def candidates_table(
+    found: Search, outcomes: Sequence[Outcome], n_workers: int = 1
+) -> pd.DataFrame:
     """All candidates in order of target, stratum, size and types (``miner.columns``)."""
     adjusted = found.adjuster.adjusted([f.p for f in found.found])
     rules = found.explanation.rules
@@ -59,7 +61,10 @@ def candidates_table(found: Search, outcomes: Sequence[Outcome], n_workers: int 
         for (case_at, row), place in found.explanation.explained_by.items():
             if case_at == i:
                 rule = rules[place]
-                frame.loc[row, "explained_by"] = _name_of(found, rule.case, rule.row)
+                name = _name_of(found, rule.case, rule.row)
+                if rule.case != i:
+                    name += " [{}, {}]".format(*found.found[rule.case].case.name)
+                frame.loc[row, "explained_by"] = name
                 frame.loc[row, "verdict"] = EXPLAINED
         for order, (rule, outcome) in enumerate(zip(rules, outcomes, strict=True), start=1):
             if rule.case != i:

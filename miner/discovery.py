@@ -13,7 +13,7 @@ from miner.event_windows import types_before_events
 from miner.kernels import hits as hit_kernels
 from miner.kernels import tails
 from miner.nulls.exchanges import Exchanger
-from miner.nulls.margins import ROWS_A_BLOCK, Margins, fit_margins, judge_hits
+from miner.nulls.margins import ROWS_A_BLOCK, Margins, cannot_pass, fit_margins, judge_hits
 from miner.proposals import count_windows, propose
 from miner.units import Case
 
@@ -60,6 +60,7 @@ def find(
     max_size: int,
     start: Margins | None = None,
     by_mining: bool = True,
+    level: float | None = None,
     n_workers: int = 1,
 ) -> Found:
     """Propose combinations from the pre-event windows and judge them by the margins null.
@@ -69,6 +70,7 @@ def find(
     start : margins of a similar case, to begin the fit from
     by_mining : False counts the family's members over the windows instead of mining them, with
         the same result for the family; ``n_proposed`` then counts family members only
+    level : give p = 1 to what is surely above this level, instead of working it out
     """
     combos = case.unit.triggers.combos
     is_seen_vk = types_before_events(case)
@@ -91,7 +93,11 @@ def find(
     )
     p = np.ones(len(combos))
     rows = np.flatnonzero(is_proposed)
-    p[rows] = judge_hits(rows, table.offset_c, rates, hits[rows], everything, n_workers)
+    asked = hits[rows]
+    if level is not None:
+        sure = cannot_pass(asked, expected[rows], variance[rows], level)
+        asked = np.where(sure, 0, asked)
+    p[rows] = judge_hits(rows, table.offset_c, rates, asked, everything, n_workers)
     return Found(case, n_proposed, is_proposed, margins, rates, hits, expected, variance, p)
 
 

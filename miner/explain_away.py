@@ -11,7 +11,7 @@ from miner.adjust import benjamini_hochberg
 from miner.columns import JOINER
 from miner.discovery import Adjuster, Found
 from miner.kernels import hits as kernels
-from miner.nulls.margins import fit_margins, judge_hits
+from miner.nulls.margins import cannot_pass, fit_margins, judge_hits
 from miner.sharper import sharper_p
 from miner.triggers import Combo
 
@@ -59,9 +59,7 @@ class _State:
     def __init__(self, found: Found, min_triggers: int, fdr: float, n_workers: int) -> None:
         self.found = found
         self.min_triggers = min_triggers
-        # a median lies within one of its mean (Jogdeo & Samuels 1968): at or under the floor of
-        # the mean p is at least 1/2 and need not be worked out to know that it does not pass
-        self.can_skip = fdr < 0.5
+        self.fdr = fdr
         self.n_workers = n_workers
         self.rows = found.rows
         self.is_left = np.ones(found.rates.size, dtype=bool)
@@ -79,7 +77,11 @@ class _State:
         kernels.close_around(self.is_open_et, entity, session, unit.horizon)
         self.is_left &= kernels.look_up(table.entity, table.session, self.is_open_et)
         self.margins = fit_margins(
-            self.is_open_et, case.is_window_et, unit.segment.panel.peers, self.margins, self.n_workers
+            self.is_open_et,
+            case.is_window_et,
+            unit.segment.panel.peers,
+            self.margins,
+            self.n_workers,
         )
         self.rates = self.margins.rates(table.entity, table.session)
         everything = np.arange(self.found.size)
@@ -89,11 +91,15 @@ class _State:
         self.excess = _excess(self.hits, self.expected, variance)
         hits = self.hits[self.rows]
         skip = self.n[self.rows] < self.min_triggers
-        if self.can_skip:
-            skip |= hits <= np.floor(self.expected[self.rows])
+        skip |= cannot_pass(hits, self.expected[self.rows], variance[self.rows], self.fdr)
         self.p = np.ones(self.found.size)
         self.p[self.rows] = judge_hits(
-            self.rows, table.offset_c, self.rates, np.where(skip, 0, hits), self.is_left, self.n_workers
+            self.rows,
+            table.offset_c,
+            self.rates,
+            np.where(skip, 0, hits),
+            self.is_left,
+            self.n_workers,
         )
 
     def triggers(self, row: int) -> tuple[np.ndarray, np.ndarray]:
@@ -133,10 +139,17 @@ def explain_away(
         state = states[i]
         rules.append(
             Rule(
-                i, row, int(state.n[row]), int(state.hits[row]), float(state.expected[row]),
-                float(state.excess[row]), float(state.p[row]), float(adjusted[i][row]), instead_of,
+                i,
+                row,
+                int(state.n[row]),
+                int(state.hits[row]),
+                float(state.expected[row]),
+                float(state.excess[row]),
+                float(state.p[row]),
+                float(adjusted[i][row]),
+                instead_of,
             )
-        )  # fmt: skip
+        )
         place = len(rules) - 1
         n_before = state.n
         state.take(row)
@@ -173,17 +186,19 @@ def _pick(
         case = state.found.case
         combo = case.unit.triggers.combos[key[1]]
         names = JOINER.join(case.unit.segment.panel.type_names[k] for k in combo)
-        return -float(state.excess[key[1]]), len(combo), names, case.name
+        return -_tied(state.excess[key[1]]), len(combo), names, case.name
 
     i, row = first = min(passing, key=rank)
     state = states[i]
     combos = state.found.case.unit.triggers.combos
     while True:
         parts = [
-            key for key in passing
-            if key[0] == i and set(combos[key[1]]) < set(combos[row])
+            key
+            for key in passing
+            if key[0] == i
+            and set(combos[key[1]]) < set(combos[row])
             and sharper_p(state.found.case, state.rates, state.is_left, row, key[1]) > fdr
-        ]  # fmt: skip
+        ]
         if not parts:
             break
         i, row = min(parts, key=rank)
@@ -215,8 +230,9 @@ def _sharpen(
                 if n_left[row] >= min_triggers and (base, row) not in done:
                     p_of[base, row] = (
                         sharper_p(f.case, f.rates, left[base], row, rule.row)
-                        if f.is_proposed[row] else 1.0
-                    )  # fmt: skip
+                        if f.is_proposed[row]
+                        else 1.0
+                    )
 
     for base, rule in enumerate(rules):
         left[base] = np.ones(found[rule.case].rates.size, dtype=bool)
@@ -225,8 +241,11 @@ def _sharpen(
         keys = sorted(p_of)
         p = np.array([p_of[key] for key in keys])
         adjusted = benjamini_hochberg(p, p.size)
-        ties = np.flatnonzero(p == p.min())
-        best = min(ties, key=lambda a: (-_excess_of(found, rules, keys[a]), _text(found, rules, keys[a])))
+        rounded = np.array([_tied(value) for value in p])
+        ties = np.flatnonzero(rounded == rounded.min())
+        best = min(
+            ties, key=lambda a: (-_excess_of(found, rules, keys[a]), _text(found, rules, keys[a]))
+        )
         if adjusted[best] > fdr:
             break
         base, row = keys[best]
@@ -243,16 +262,29 @@ def _sharpen(
             rates, is_hit = f.rates[part][is_left], f.case.is_hit[part][is_left]
             rules.append(
                 Rule(
-                    rules[base].case, row, int(is_left.sum()), int(is_hit.sum()), float(rates.sum()),
-                    float(_excess_of(found, rules, keys[best])), float(p[best]),
-                    float(adjusted[best]), None, base, float(p[best]),
+                    rules[base].case,
+                    row,
+                    int(is_left.sum()),
+                    int(is_hit.sum()),
+                    float(rates.sum()),
+                    float(_excess_of(found, rules, keys[best])),
+                    float(p[best]),
+                    float(adjusted[best]),
+                    None,
+                    base,
+                    float(p[best]),
                 )
-            )  # fmt: skip
+            )
         done.add((base, row))
         left[base] = left[base] & ~_near(f, left[base], row, rules[base].row)
         p_of.pop((base, row), None)
         test(base)
     return rules
+
+
+def _tied(value: float) -> float:
+    """Nine digits: what differs only beyond them differs by rounding, and is a tie."""
+    return float(f"{value:.9g}")
 
 
 def _near(found: Found, is_left: np.ndarray, row: int, base_row: int) -> np.ndarray:
@@ -273,9 +305,10 @@ def _near(found: Found, is_left: np.ndarray, row: int, base_row: int) -> np.ndar
 
 
 def _excess_of(found: Sequence[Found], rules: Sequence[Rule], key: tuple[int, int]) -> float:
+    """Excess of a pair's superset over all its triggers."""
     f = found[rules[key[0]].case]
     row = key[1]
-    return float(_excess(f.hits[[row]], f.expected[[row]], f.variance[[row]])[0])
+    return _tied(_excess(f.hits[[row]], f.expected[[row]], f.variance[[row]])[0])
 
 
 def _text(found: Sequence[Found], rules: Sequence[Rule], key: tuple[int, int]) -> tuple[int, str]:

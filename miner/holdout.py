@@ -71,14 +71,21 @@ def judge_holdout(
         verdict = CONFIRMED if passed else REFUTED if power >= ENOUGH_POWER else UNDERPOWERED
         outcomes.append(
             Outcome(
-                n, int(unit.hits[i]), unit.hits[i] / n if n else float("nan"),
-                float(unit.interval.low[i]), float(unit.interval.high[i]),
-                bool(unit.interval.is_few[i]), float(unit.base_rate[i]), float(unit.expected[i]),
-                float(unit.p[i]), float(adjusted), power,
+                n,
+                int(unit.hits[i]),
+                unit.hits[i] / n if n else float("nan"),
+                float(unit.interval.low[i]),
+                float(unit.interval.high[i]),
+                bool(unit.interval.is_few[i]),
+                float(unit.base_rate[i]),
+                float(unit.expected[i]),
+                float(unit.p[i]),
+                float(adjusted),
+                power,
                 None if rule.sharpens is None else _sharper(unit, i, unit.place(rule.sharpens)),
                 verdict,
             )
-        )  # fmt: skip
+        )
     return outcomes
 
 

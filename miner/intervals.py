@@ -13,7 +13,9 @@ from miner.triggers import TriggerTable
 FEW_CLUSTERS = 10
 
 
-def wilson(share: np.ndarray, n: np.ndarray, quantile: np.ndarray | float) -> tuple[np.ndarray, np.ndarray]:
+def wilson(
+    share: np.ndarray, n: np.ndarray, quantile: np.ndarray | float
+) -> tuple[np.ndarray, np.ndarray]:
     """Score interval for a binomial share of ``n`` (which may be fractional) trials.
 
     Wilson (1927), JASA 22:209-212; ``quantile`` is the two-sided normal or t quantile.
@@ -24,7 +26,9 @@ def wilson(share: np.ndarray, n: np.ndarray, quantile: np.ndarray | float) -> tu
     return np.maximum(middle - half, 0.0), np.minimum(middle + half, 1.0)
 
 
-def clopper_pearson(x: np.ndarray, n: np.ndarray, level: float = 0.95) -> tuple[np.ndarray, np.ndarray]:
+def clopper_pearson(
+    x: np.ndarray, n: np.ndarray, level: float = 0.95
+) -> tuple[np.ndarray, np.ndarray]:
     """Exact interval for ``x`` successes in ``n`` trials; both may be fractional.
 
     Clopper & Pearson (1934), Biometrika 26:404-413.

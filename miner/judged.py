@@ -55,9 +55,7 @@ def judge_on(
     table = triggers.find_triggers(
         segment, combos, code, lookback=lookback, horizon=horizon, rest=rest, n_workers=n_workers
     )
-    unit = make_unit(
-        segment, stratum, code, table, lookback=lookback, horizon=horizon, rest=rest
-    )
+    unit = make_unit(segment, stratum, code, table, lookback=lookback, horizon=horizon, rest=rest)
     case = make_case(target, unit, segment.panel.events[target])
     margins = fit_margins(
         unit.is_open_et, case.is_window_et, segment.panel.peers, n_workers=n_workers
@@ -92,10 +90,15 @@ def judge_rules(
             mine.add(rule.sharpens)
     judged = {
         key: judge_on(
-            segment, *key, sorted(members), lookback=lookback, horizon=horizon, rest=rest,
+            segment,
+            *key,
+            sorted(members),
+            lookback=lookback,
+            horizon=horizon,
+            rest=rest,
             n_workers=n_workers,
         )
         for key, members in combos.items()
-    }  # fmt: skip
+    }
     units = [judged[rule.target, rule.stratum, rule.code] for rule in rules]
     return [(unit, unit.place(rule.combo)) for unit, rule in zip(units, rules, strict=True)]

@@ -90,7 +90,11 @@ class Spans:
 
 
 def pack_alerts(
-    entity: np.ndarray, type_: np.ndarray, session: np.ndarray, n_entities: int, n_types: int,
+    entity: np.ndarray,
+    type_: np.ndarray,
+    session: np.ndarray,
+    n_entities: int,
+    n_types: int,
     n_sessions: int,
 ) -> np.ndarray:
     """Alerts as bits, uint64 [entities, types, words]; repeats within a session fall together."""

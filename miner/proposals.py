@@ -35,7 +35,9 @@ def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo,
     frame = pd.DataFrame(is_seen_vk[:, kept], columns=kept)
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
-        found = mine(frame, min_support=(min_hits - 0.5) / n_windows, max_len=max_size, use_colnames=True)
+        found = mine(
+            frame, min_support=(min_hits - 0.5) / n_windows, max_len=max_size, use_colnames=True
+        )
     counts = np.rint(found["support"].to_numpy() * n_windows).astype(np.int64)
     return {
         tuple(sorted(int(k) for k in itemset)): int(count)

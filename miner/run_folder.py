@@ -15,7 +15,7 @@ import pandas as pd
 from miner.errors import OutputError, explain
 
 if TYPE_CHECKING:
-    from miner.hunt import Hunt
+    from miner.hunting import Hunt
 
 FLOATS = "%.10g"
 
@@ -29,14 +29,24 @@ def check_free(folder: Path, replace: bool) -> None:
     """
     if folder.exists() and not replace:
         raise OutputError(
-            explain("output", str(folder), "not exist yet", "a folder that does",
-                    "Name another folder, or allow replacing this one (--replace)")
-        )  # fmt: skip
+            explain(
+                "output",
+                str(folder),
+                "not exist yet",
+                "a folder that does",
+                "Name another folder, or allow replacing this one (--replace).",
+            )
+        )
     if folder.exists() and not (folder / "run.json").is_file() and any(folder.iterdir()):
         raise OutputError(
-            explain("output", str(folder), "be the folder of a run to be replaced",
-                    "a folder without run.json", "Name another folder.")
-        )  # fmt: skip
+            explain(
+                "output",
+                str(folder),
+                "be the folder of a run to be replaced",
+                "a folder without run.json",
+                "Name another folder.",
+            )
+        )
     try:
         folder.parent.mkdir(parents=True, exist_ok=True)
         writable = os.access(folder.parent, os.W_OK)
@@ -44,9 +54,14 @@ def check_free(folder: Path, replace: bool) -> None:
         writable = False
     if not writable:
         raise OutputError(
-            explain("output", str(folder.parent), "be a folder that can be written",
-                    "one that cannot", "Name a folder elsewhere.")
-        )  # fmt: skip
+            explain(
+                "output",
+                str(folder.parent),
+                "be a folder that can be written",
+                "one that cannot",
+                "Name a folder elsewhere.",
+            )
+        )
 
 
 def write(result: Hunt, folder: Path, replace: bool = False) -> None:
@@ -80,9 +95,14 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
             aside.rename(folder)
     except OSError as error:
         raise OutputError(
-            explain("output", str(folder), "be writable", f"the system's error: {error.strerror}",
-                    "Free some space or name a folder elsewhere.")
-        ) from error  # fmt: skip
+            explain(
+                "output",
+                str(folder),
+                "be writable",
+                f"the system's error: {error.strerror}",
+                "Free some space or name a folder elsewhere.",
+            )
+        ) from error
     finally:
         shutil.rmtree(aside, ignore_errors=True)
 

@@ -33,11 +33,14 @@ class Search:
             base = None if rule.sharpens is None else self.explanation.rules[rule.sharpens].row
             chosen.append(
                 ChosenRule(
-                    case.target, case.unit.stratum, case.unit.code, table.combos[rule.row],
+                    case.target,
+                    case.unit.stratum,
+                    case.unit.code,
+                    table.combos[rule.row],
                     float(case.hits_c[rule.row] / table.count_c[rule.row]),
                     None if base is None else table.combos[base],
                 )
-            )  # fmt: skip
+            )
         return chosen
 
 
@@ -48,18 +51,31 @@ def cases_of(
     windows, mining = study.windows, study.mining
     codes = stratum_codes(segment.panel, study.groups is not None and study.groups.pooled)
     families = find_family(
-        segment, codes, lookback=windows.lookback, horizon=windows.horizon, rest=windows.rest,
-        max_size=mining.max_size, min_triggers=mining.min_triggers, n_workers=n_workers,
-    )  # fmt: skip
+        segment,
+        codes,
+        lookback=windows.lookback,
+        horizon=windows.horizon,
+        rest=windows.rest,
+        max_size=mining.max_size,
+        min_triggers=mining.min_triggers,
+        n_workers=n_workers,
+    )
     units = [
         make_unit(
-            segment, name, code, families[name], lookback=windows.lookback,
-            horizon=windows.horizon, rest=windows.rest,
+            segment,
+            name,
+            code,
+            families[name],
+            lookback=windows.lookback,
+            horizon=windows.horizon,
+            rest=windows.rest,
         )
         for name, code in codes.items()
-    ]  # fmt: skip
+    ]
     return [
-        make_case(target, unit, segment.panel.events[target]) for target in targets for unit in units
+        make_case(target, unit, segment.panel.events[target])
+        for target in targets
+        for unit in units
     ]
 
 
@@ -114,11 +130,15 @@ def placebo_rules(real: Search, study: Study, n_workers: int = 1) -> list[int]:
     def count(world: int) -> int:
         found = [
             find(
-                make_case(f.case.target, f.case.unit, drawn[i][world]), min_hits=mining.min_hits,
-                max_size=mining.max_size, start=f.margins, by_mining=False,
+                make_case(f.case.target, f.case.unit, drawn[i][world]),
+                min_hits=mining.min_hits,
+                max_size=mining.max_size,
+                start=f.margins,
+                by_mining=False,
+                level=study.testing.fdr,
             )
             for i, f in enumerate(real.found)
-        ]  # fmt: skip
+        ]
         explanation = explain_away(
             found, real.adjuster, fdr=study.testing.fdr, min_triggers=mining.min_triggers
         )

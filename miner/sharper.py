@@ -29,12 +29,19 @@ def sharper_p(
     rest = slice(table.offset_c[smaller], table.offset_c[smaller + 1])
     is_own, is_rest = is_left[own], is_left[rest].copy()
     is_rest &= ~kernels.near_any(
-        table.entity[rest], table.session[rest],
-        table.entity[own][is_own], table.session[own][is_own], case.unit.horizon,
-    )  # fmt: skip
+        table.entity[rest],
+        table.session[rest],
+        table.entity[own][is_own],
+        table.session[own][is_own],
+        case.unit.horizon,
+    )
     return float(
         tails.sharper_p_value(
-            rates[rest][is_rest], int(case.is_hit[rest][is_rest].sum()),
-            rates[own][is_own], int(case.is_hit[own][is_own].sum()), NODES, WEIGHTS,
+            rates[rest][is_rest],
+            int(case.is_hit[rest][is_rest].sum()),
+            rates[own][is_own],
+            int(case.is_hit[own][is_own].sum()),
+            NODES,
+            WEIGHTS,
         )
-    )  # fmt: skip
+    )

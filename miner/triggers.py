@@ -66,7 +66,12 @@ Stream = tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]
 
 
 def _find(
-    segment: Segment, combos: Sequence[Combo], lookback: int, rest: int, horizon: int, n_workers: int
+    segment: Segment,
+    combos: Sequence[Combo],
+    lookback: int,
+    rest: int,
+    horizon: int,
+    n_workers: int,
 ) -> list[Stream]:
     """Eligible triggers of combinations of one size, block by block of entities."""
     panel = segment.panel
@@ -76,9 +81,17 @@ def _find(
     def find(block: tuple[int, int]) -> Stream:
         part = slice(*block)
         return kernels.find_triggers(
-            panel.alert_ekw[part], panel.cover_eqw[part], panel.class_k, combo_ck, jump_ck,
-            block[0], lookback, rest, first_t, stop_t,
-        )  # fmt: skip
+            panel.alert_ekw[part],
+            panel.cover_eqw[part],
+            panel.class_k,
+            combo_ck,
+            jump_ck,
+            block[0],
+            lookback,
+            rest,
+            first_t,
+            stop_t,
+        )
 
     return workers.in_order(find, workers.blocks(panel.n_entities, ENTITIES_A_BLOCK), n_workers)
 

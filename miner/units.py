@@ -139,7 +139,10 @@ def base_rates(case: Case) -> np.ndarray:
     for i, classes in enumerate(distinct):
         class_sq[i, : len(classes)] = classes
     cells, in_window = bits.count_cells(
-        panel.cover_eqw, class_sq, bits.pack_flags(unit.is_open_et), bits.pack_flags(case.is_window_et)
+        panel.cover_eqw,
+        class_sq,
+        bits.pack_flags(unit.is_open_et),
+        bits.pack_flags(case.is_window_et),
     )
     rate = np.full(len(distinct), np.nan)
     np.divide(in_window, cells, out=rate, where=cells > 0)

@@ -44,9 +44,10 @@ def folds(n_sessions: int, n_folds: int, gap: int, shortest: int) -> list[tuple[
         return []
     # the rows split here are sessions, so the gap counts sessions
     split = (
-        TimeSeriesSplit(n_splits=n_folds, gap=gap) if n_folds > 1
+        TimeSeriesSplit(n_splits=n_folds, gap=gap)
+        if n_folds > 1
         else TimeSeriesSplit(n_splits=2, gap=gap)
-    )  # fmt: skip
+    )
     found = [
         (int(early[-1]), int(late[0]), int(late[-1]))
         for early, late in split.split(np.arange(n_sessions))
@@ -67,14 +68,27 @@ def walk_forward(
         late = holdout_slice(panel, first, last)
         rules = search(early, targets, study, with_draws=False, n_workers=n_workers).chosen()
         judged = judge_rules(
-            late, rules, lookback=windows.lookback, horizon=windows.horizon, rest=windows.rest,
+            late,
+            rules,
+            lookback=windows.lookback,
+            horizon=windows.horizon,
+            rest=windows.rest,
             n_workers=n_workers,
-        )  # fmt: skip
+        )
         rows += [
             FoldRule(
-                number, until, first, last, rule.target, rule.stratum, rule.combo,
-                int(unit.triggers[i]), int(unit.hits[i]), float(unit.expected[i]), float(unit.p[i]),
+                number,
+                until,
+                first,
+                last,
+                rule.target,
+                rule.stratum,
+                rule.combo,
+                int(unit.triggers[i]),
+                int(unit.hits[i]),
+                float(unit.expected[i]),
+                float(unit.p[i]),
             )
             for rule, (unit, i) in zip(rules, judged, strict=True)
-        ]  # fmt: skip
+        ]
     return parts, rows

@@ -7,14 +7,13 @@ source. Definitions on tiny worlds are checked in test_naive_worlds.py.
 from itertools import combinations, product
 from math import comb, prod
 
+import naive
 import numpy as np
 import pytest
 from scipy.integrate import quad
 from scipy.stats import binom, hypergeom, norm
 from statsmodels.regression.linear_model import OLS
 from statsmodels.stats.sandwich_covariance import cov_cluster_2groups
-
-import naive
 
 # Benjamini & Hochberg 1995, section 4: fifteen p-values of Neuhaus et al. 1992.
 BH_1995 = [
@@ -118,10 +117,11 @@ def test_westfall_wolfinger_1997_by_every_table():
 
 
 # Terada et al. 2013, the authors' sample_item2.csv; the row O is reconstructed as all zeros.
-LAMP_ROWS = dict(
-    A="1110", B="1110", C="1001", D="0000", E="1110", F="1000", G="1111", H="0000",
-    I="0101", J="0010", K="0001", L="0001", M="0001", N="1110", O="0000",
-)  # fmt: skip
+LAMP_ROWS = {
+    "A": "1110", "B": "1110", "C": "1001", "D": "0000", "E": "1110", "F": "1000", "G": "1111",
+    "H": "0000", "I": "0101", "J": "0010", "K": "0001", "L": "0001", "M": "0001", "N": "1110",
+    "O": "0000",
+}  # fmt: skip
 
 
 def test_westfall_young_on_the_lamp_sample():
@@ -186,8 +186,14 @@ def test_intervals_of_newcombe_1998(x, n, wilson, clopper_pearson):
 
 
 # Rao & Scott 1992, table 1 (Weil's rats): (pups alive, pups born) per litter.
-CONTROL = "13/13 12/12 9/9 9/9 8/8 8/8 12/13 11/12 9/10 9/10 8/9 11/13 4/5 5/7 7/10 7/10".split()
-TREATED = "12/12 11/11 10/10 9/9 10/11 9/10 9/10 8/9 8/9 4/5 7/9 4/7 5/10 3/6 3/10 0/7".split()
+CONTROL = [
+    *((13, 13), (12, 12), (9, 9), (9, 9), (8, 8), (8, 8), (12, 13), (11, 12)),
+    *((9, 10), (9, 10), (8, 9), (11, 13), (4, 5), (5, 7), (7, 10), (7, 10)),
+]
+TREATED = [
+    *((12, 12), (11, 11), (10, 10), (9, 9), (10, 11), (9, 10), (9, 10), (8, 9)),
+    *((8, 9), (4, 5), (7, 9), (4, 7), (5, 10), (3, 6), (3, 10), (0, 7)),
+]
 
 
 @pytest.mark.parametrize(
@@ -199,9 +205,8 @@ TREATED = "12/12 11/11 10/10 9/9 10/11 9/10 9/10 8/9 8/9 4/5 7/9 4/7 5/10 3/6 3/
 )
 def test_design_effect_of_rao_and_scott_1992(litters, total, deff, n_effective, korn_graubard):
     """Biometrics 48:577-585; interval of Korn & Graubard 1998 on the effective n, recomputed."""
-    pairs = [tuple(map(int, litter.split("/"))) for litter in litters]
-    y = [int(i < x) for x, n in pairs for i in range(n)]
-    litter_of = [litter for litter, (_, n) in enumerate(pairs) for _ in range(n)]
+    y = [int(i < x) for x, n in litters for i in range(n)]
+    litter_of = [litter for litter, (_, n) in enumerate(litters) for _ in range(n)]
     assert (sum(y), len(y)) == total
     p, n = sum(y) / len(y), len(y)
     found = naive.cluster_variance(y, litter_of) / (p * (1 - p) / n)
@@ -233,16 +238,19 @@ def test_two_way_interval_is_that_of_its_parts():
     assert deff > 1.2  # the fixture has clusters that matter
     low, high, few = naive.precision_interval(cells, y.tolist(), horizon)
     t_24 = 2.0638985616  # the .975 quantile of t with 24 degrees of freedom
-    assert len(set(entity)) == 25 and not few
+    assert len(set(entity)) == 25
+    assert not few
     assert (low, high) == pytest.approx(naive.wilson(p, n / deff, t_24), rel=1e-9)
-    assert low < naive.wilson(p, n)[0] and high > naive.wilson(p, n)[1]
+    assert low < naive.wilson(p, n)[0]
+    assert high > naive.wilson(p, n)[1]
 
 
 def test_interval_with_few_clusters_or_no_hits():
     """Clopper-Pearson on distinct entity-block cells, and the word of warning."""
     cells = [("a", 0), ("a", 1), ("a", 9), ("b", 0)]  # blocks of 4: a0 a0 a2 b0
     low, high, few = naive.precision_interval(cells, [1, 0, 0, 1], 4)
-    assert few and (low, high) == naive.clopper_pearson(1.5, 3)
+    assert few
+    assert (low, high) == naive.clopper_pearson(1.5, 3)
     many = [(f"e{i}", 10 * i) for i in range(12)]
     assert naive.precision_interval(many, [0] * 12, 5) == (*naive.clopper_pearson(0, 12), False)
     assert naive.precision_interval(many, [1] * 12, 5) == (*naive.clopper_pearson(12, 12), False)
@@ -285,7 +293,8 @@ def test_five_baskets():
     ]
     assert len(naive.frequent_itemsets(baskets, 3, 4)) == 8
     twice = naive.frequent_itemsets(baskets, 2, 4)
-    assert len(twice) == 17 and twice["bread", "diapers", "milk"] == 2
+    assert len(twice) == 17
+    assert twice["bread", "diapers", "milk"] == 2
 
 
 def test_poisson_binomial():

@@ -4,14 +4,13 @@ from collections import Counter
 from dataclasses import replace
 from itertools import product
 
+import naive
 import numpy as np
 import pytest
+from naive import World
 from scipy.optimize import minimize
 from scipy.stats import chi2
 from sklearn.linear_model import LogisticRegression
-
-import naive
-from naive import World
 
 ALL = ("boom", "all")
 
@@ -102,7 +101,8 @@ def test_labels_units_and_overlaps():
         *("small", "small", "large", "large", "small", "small", "large"),
     ]
     assert naive.stratum_at(world, "f", 9) == ""
-    assert naive.peer_at(world, "f", 9) == "" and naive.peer_at(world, "f", 10) == "small"
+    assert naive.peer_at(world, "f", 9) == ""
+    assert naive.peer_at(world, "f", 10) == "small"
     assert naive.units(world) == [("boom", "large"), ("boom", "small"), ("boom", "all")]
     assert naive.units(replace(world, pooled=False)) == [("boom", "large"), ("boom", "small")]
     assert naive.units(small_world()) == [ALL]
@@ -157,8 +157,9 @@ def test_margins_are_held(seed):
     z[4] = is_open[4]
     q = naive.fit_margins(is_open, z, peer)
     assert (np.isnan(q) == ~is_open).all()
-    assert (q[3][is_open[3]] == 0).all() and (q[4][is_open[4]] == 1).all()
-    assert 0.1 < np.nanmean((q > 0) & (q < 1))
+    assert (q[3][is_open[3]] == 0).all()
+    assert (q[4][is_open[4]] == 1).all()
+    assert np.nanmean((q > 0) & (q < 1)) > 0.1
     q = np.nan_to_num(q)
     np.testing.assert_allclose(q.sum(1), z.sum(1), atol=1e-10)
     for group in range(2):
@@ -200,7 +201,8 @@ def test_margins_against_logistic_regression():
     is_open = free[:, :14] | free[:, 14:]
     e, t = np.nonzero(is_open)
     line = peer[e, t] * 14 + t
-    assert len(e) > 60 and len(set(line.tolist())) > 15
+    assert len(e) > 60
+    assert len(set(line.tolist())) > 15
     dummies = np.zeros((len(e), 10 + 28))
     dummies[np.arange(len(e)), e] = 1
     dummies[np.arange(len(e)), 10 + line] = 1
@@ -211,30 +213,36 @@ def test_margins_against_logistic_regression():
     np.testing.assert_allclose(found, expected, atol=2e-5)
 
 
+# Rows 0-1 must fill columns 0-1 and rows 2-3 must leave columns 2-3 empty, yet no line is sure.
+NEAR_STAIRS = np.array([[1, 1, 1, 0], [1, 1, 0, 1], [1, 0, 0, 0], [0, 1, 0, 0]], dtype=bool)
+
+
 def test_forced_cells_by_every_table():
     """A cell is forced when all tables with the same margins agree on it (own enumeration)."""
     rng = np.random.default_rng(11)
     beyond_peeling = 0
-    for _ in range(40):
-        is_open = rng.random((4, 4)) < 0.8
-        z = is_open & (rng.random((4, 4)) < 0.5)
+    for trial in range(30):
+        is_open = rng.random((4, 4)) < 0.85
+        z = rng.random((4, 4)) < 0.5
+        if trial % 2:
+            z = NEAR_STAIRS[rng.permutation(4)][:, rng.permutation(4)]
+        z = z & is_open
         where = np.argwhere(is_open)
-        tables = np.array(list(product((False, True), repeat=len(where)))[: 1 << 16])
+        tables = np.array(list(product((False, True), repeat=len(where))))
         full = np.zeros((len(tables), 4, 4), dtype=bool)
         full[:, where[:, 0], where[:, 1]] = tables
         same = (full.sum(1) == z.sum(0)).all(1) & (full.sum(2) == z.sum(1)).all(1)
         agree = (full[same] == z).all(0) & is_open
         assert (naive.forced_cells(is_open, z) == agree).all()
-        beyond_peeling += (agree & naive.peel(is_open, z)).any()
-    assert beyond_peeling >= 3
+        beyond_peeling += int((agree & naive.peel(is_open, z)).any())
+    assert beyond_peeling >= 2
 
 
 def test_an_estimate_at_infinity_takes_its_limit():
-    """Rows 0-1 must fill columns 0-1 and rows 2-3 leave 2-3 empty; the rest is a coin's toss."""
-    z = np.array([[1, 1, 1, 0], [1, 1, 0, 1], [1, 0, 0, 0], [0, 1, 0, 0]], dtype=bool)
+    """The forced cells are what they are, and the others a coin's toss."""
     is_open = np.ones((4, 4), dtype=bool)
-    assert naive.peel(is_open, z).all()
-    q = naive.fit_margins(is_open, z, np.zeros((4, 4), dtype=int))
+    assert naive.peel(is_open, NEAR_STAIRS).all()
+    q = naive.fit_margins(is_open, NEAR_STAIRS, np.zeros((4, 4), dtype=int))
     expected = np.full((4, 4), 0.5)
     expected[:2, :2], expected[2:, 2:] = 1, 0
     np.testing.assert_allclose(q, expected, atol=1e-12)
@@ -301,8 +309,7 @@ def test_a_long_chain_visits_the_orbit_evenly():
         events=logs("a", boom=[5, 14]) | logs("b", boom=[8, 13]) | logs("c", boom=[7, 8, 13])
         | logs("d", boom=[5, 17]),
         peers=peers,
-        coverage=(("a", "", None, None), ("b", "", 6, None), ("c", "", None, None))
-        + (("d", "", None, None),),
+        coverage=tuple((name, "", 6 if name == "b" else None, None) for name in "abcd"),
     )  # fmt: skip
     orbit = naive.exchange_orbit(world, ALL, (0, 19))
     rng = np.random.default_rng(0)

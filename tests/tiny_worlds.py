@@ -11,7 +11,6 @@ from datetime import date, timedelta
 from pathlib import Path
 
 import numpy as np
-
 from naive import Span, World
 
 FIRST_DAY = date(2021, 1, 1)
@@ -77,8 +76,8 @@ def random_groups(
         elif kind == 1:  # the later start wins, then the first row holds again
             rows.append((entity, -5, None, band, sector))
             rows.append((entity, moves, moves + 9, other, "south"))
-        elif kind == 2:  # no label at the end
-            rows.append((entity, 0, n_sessions - 12, band, sector))
+        elif kind == 2:  # no label later on
+            rows.append((entity, 0, moves, band, sector))
         elif kind == 3:
             rows.append((entity, None, None, band, ""))
         else:

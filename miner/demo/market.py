@@ -14,6 +14,7 @@ from miner.demo.world_parts import (
     IntArray,
     Intensity,
     company_names,
+    distinct,
     follow_ups,
     name_weights,
     planted_alert_sessions,
@@ -132,7 +133,7 @@ def invent_market(rng: np.random.Generator) -> Market:
     planted_alerts, planted_events = _plant(rng, day, companies)
 
     entity, session = _intensity(companies, level, _EVENT_EXPOSURE).draw(rng, _N_EVENTS)
-    event = np.unique(
+    event = distinct(
         np.concatenate((entity, planted_events[0])) * day.size
         + np.concatenate((session, planted_events[1]))
     )

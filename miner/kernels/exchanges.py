@@ -9,7 +9,9 @@ from miner.kernels.compiling import kernel
 
 
 @kernel
-def exchange(session_v, entity_v, first_event_e, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep):
+def exchange(
+    session_v, entity_v, first_event_e, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep
+):
     """Run sweeps of exchanges and keep the last ``n_keep`` states.
 
     Parameters

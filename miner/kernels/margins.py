@@ -115,7 +115,9 @@ def settle_sure(spell_e, start_i, stop_i, group_i, windows_e, cells_e, windows_g
 
 
 @kernel
-def row_sweep(first_i, last_i, spell_e, start_i, stop_i, group_i, u_e, v_gt, target_e, sum_gt, var_gt):
+def row_sweep(
+    first_i, last_i, spell_e, start_i, stop_i, group_i, u_e, v_gt, target_e, sum_gt, var_gt
+):
     """One Newton step of every row of a block, then the block's column sums with the new rows.
 
     Spells ``[first_i, last_i)`` hold whole entities. ``u_e`` is changed in place; ``sum_gt`` and

@@ -10,7 +10,17 @@ from miner.kernels.tails import TINY
 
 @kernel
 def shift_p_values(
-    row, offset_c, entity, session, hits, life_e, life_start, life_stop, window_e, window_t, n_sessions
+    row,
+    offset_c,
+    entity,
+    session,
+    hits,
+    life_e,
+    life_start,
+    life_stop,
+    window_e,
+    window_t,
+    n_sessions,
 ):
     """P(sum over entities of hits after independent shifts >= hits), for the combinations ``row``.
 

@@ -9,39 +9,60 @@ import numpy as np
 from miner.kernels.compiling import kernel
 
 TINY = 1e-300
-EXACT_WORK = 4_000_000  # trials x states up to which a tail is summed exactly
+EXACT_WORK = 100_000  # trials x states up to which one tail is always summed exactly
+EXACT_STATES = 60  # and states up to which it is whatever the number of trials
+TABLE_WORK = 10_000_000  # trials x states up to which a whole table is
+
+
+@kernel
+def few_states(q, n_states):
+    """P(X = x) for x < n_states, and P(X >= n_states), adding two trials at a time.
+
+    All terms are positive, so the relative error stays near rounding however small they are.
+    Returns float64 [n_states] and a float.
+    """
+    now = np.zeros(n_states + 2)  # state x at x + 2, so that x - 1 and x - 2 are there
+    after = np.zeros(n_states + 2)
+    now[2] = 1.0
+    top = n_states - 1
+    tail = 0.0
+    high = 0
+    i = 0
+    if q.size % 2 == 1:
+        now[2] = 1.0 - q[0]
+        if top == 0:
+            tail = q[0]
+        else:
+            now[3] = q[0]
+            high = 1
+        i = 1
+    while i < q.size:
+        a, b = q[i], q[i + 1]
+        both = a * b
+        one = a * (1.0 - b) + b * (1.0 - a)
+        none = (1.0 - a) * (1.0 - b)
+        if high >= top - 1:
+            tail += now[2 + top] * (one + both)
+            if top >= 1:
+                tail += now[1 + top] * both
+            high = top
+        else:
+            high += 2
+        for x in range(2, high + 3):
+            after[x] = now[x] * none + now[x - 1] * one + now[x - 2] * both
+        now, after = after, now
+        i += 2
+    return now[2:], tail
 
 
 @kernel
 def exact_tail(q, least):
-    """P(X >= least) for X the sum of Bernoulli(q[i]), by adding one trial at a time.
-
-    All terms are positive, so the relative error stays near rounding however small the tail is.
-    """
+    """P(X >= least) for X the sum of Bernoulli(q[i])."""
     if least <= 0:
         return 1.0
     if least > q.size:
         return 0.0
-    p_x = np.zeros(least)
-    p_x[0] = 1.0
-    tail = 0.0
-    low = 0  # states below `low` have underflowed
-    high = 0
-    for i in range(q.size):
-        r = q[i]
-        if high == least - 1:
-            tail += r * p_x[high]
-            top = high
-        else:
-            top = high + 1
-            high = top
-        for x in range(top, low, -1):
-            p_x[x] = p_x[x] * (1.0 - r) + p_x[x - 1] * r
-        p_x[low] *= 1.0 - r
-        while low < high and p_x[low] < TINY:
-            p_x[low] = 0.0
-            low += 1
-    return min(1.0, tail)
+    return min(1.0, few_states(q, least)[1])
 
 
 @kernel
@@ -115,7 +136,7 @@ def saddlepoint_tail(q, least):
 @kernel
 def upper_tail(q, least):
     """P(X >= least): summed exactly where that is affordable, else by the saddlepoint."""
-    if q.size * least <= EXACT_WORK:
+    if q.size * least <= EXACT_WORK or least <= EXACT_STATES:
         return exact_tail(q, least)
     n_sure = 0
     n_possible = 0
@@ -139,22 +160,8 @@ def tail_table(q, first, last):
     which is what ranking draws needs, and not meant to be read as a p-value.
     """
     table = np.empty(last - first + 1)
-    if q.size * (last + 1) <= EXACT_WORK:
-        p_x = np.zeros(last + 1)
-        p_x[0] = 1.0
-        tail = 0.0  # mass above `last`
-        high = 0
-        for i in range(q.size):
-            r = q[i]
-            if high == last:
-                tail += r * p_x[high]
-                top = high
-            else:
-                top = high + 1
-                high = top
-            for x in range(top, 0, -1):
-                p_x[x] = p_x[x] * (1.0 - r) + p_x[x - 1] * r
-            p_x[0] *= 1.0 - r
+    if q.size * (last + 1) <= TABLE_WORK:
+        p_x, tail = few_states(q, last + 1)
         for x in range(last, first - 1, -1):
             tail += p_x[x]
             table[x - first] = min(1.0, tail)

@@ -121,7 +121,10 @@ def find_triggers(
             # the next row shares its first `good_depth` types with this one
             good_depth = 0
             if step < n_combos:
-                while good_depth < dead_depth and combo_ck[step, good_depth] == combo_ck[c, good_depth]:
+                while (
+                    good_depth < dead_depth
+                    and combo_ck[step, good_depth] == combo_ck[c, good_depth]
+                ):
                     good_depth += 1
             c = step
     return combo[:n].copy(), entity[:n].copy(), session[:n].copy(), on_count_c

@@ -56,9 +56,14 @@ class Exchanger:
         n_sweeps = BURN_IN + n_keep * between
         random_nv = rng.integers(0, 1 << 32, size=(n_sweeps, entity.size), dtype=np.uint32)
         kept = kernels.exchange(
-            session, entity, self.first_event_e, *self._pools, self.case.unit.slot_et, random_nv,
+            session,
+            entity,
+            self.first_event_e,
+            *self._pools,
+            self.case.unit.slot_et,
+            random_nv,
             n_keep * between,
-        )  # fmt: skip
+        )
         return kept[between - 1 :: between]
 
     def worlds(self, n_worlds: int) -> Iterator[Events]:
@@ -79,9 +84,15 @@ class Exchanger:
         def count(block: tuple[int, int]) -> np.ndarray:
             drawn = self.sessions(block[0] // DRAWS_A_BLOCK)[: block[1] - block[0]]
             return kernels.count_hits(
-                drawn, self.first_event_e, table.offset_c, table.entity, table.session,
-                unit.horizon, unit.segment.panel.n_sessions, n_planes,
-            )  # fmt: skip
+                drawn,
+                self.first_event_e,
+                table.offset_c,
+                table.entity,
+                table.session,
+                unit.horizon,
+                unit.segment.panel.n_sessions,
+                n_planes,
+            )
 
         parts = workers.in_order(count, workers.blocks(n_draws, DRAWS_A_BLOCK), n_workers)
         empty = np.empty((0, len(table.combos)), dtype=np.int32)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.special import ndtr
 
 from miner import workers
 from miner.kernels import hits as hit_kernels
@@ -16,6 +17,7 @@ from miner.units import Case
 CELLS_A_BLOCK = 1_000_000
 ROWS_A_BLOCK = 64
 TOLERANCE = 1e-11
+PATIENCE = 60  # sweeps after which cells that force the solution to infinity are looked for
 MOST_SWEEPS = 2_000
 
 
@@ -25,9 +27,13 @@ class Margins:
 
     Attributes
     ----------
+    peers : peer group of each cell
+    odds_e, odds_gt : odds of rows and columns that were fitted
+    row_order, col_order : rows and columns that are all or nothing (``kernels.settle_sure``)
+    fixed : None, or bool [entities, sessions] twice: cells that have the same value in every
+        table with these margins, and that value
     miss : float, largest relative difference between a fitted and an observed total
     n_sweeps : int, sweeps it took
-    n_sure_entities, n_sure_columns : int, rows and columns whose cells are all or nothing
     """
 
     peers: Labels
@@ -35,14 +41,25 @@ class Margins:
     odds_gt: np.ndarray
     row_order: np.ndarray
     col_order: np.ndarray
+    fixed: tuple[np.ndarray, np.ndarray] | None
     miss: float
     n_sweeps: int
 
     def rates(self, entity: np.ndarray, session: np.ndarray) -> np.ndarray:
         """Chance of an event window at each open cell: float64, the shape of ``entity``."""
-        return kernels.cell_rates(
-            entity, session, self.peers.code_et, self.odds_e, self.odds_gt, self.row_order, self.col_order
+        q = kernels.cell_rates(
+            entity,
+            session,
+            self.peers.code_et,
+            self.odds_e,
+            self.odds_gt,
+            self.row_order,
+            self.col_order,
         )
+        if self.fixed is not None:
+            is_fixed, value = (flags[entity, session] for flags in self.fixed)
+            q = np.where(is_fixed, value, q)
+        return q
 
 
 def fit_margins(
@@ -55,7 +72,8 @@ def fit_margins(
     """Maximum-entropy rates whose row and column sums over open cells are the observed ones.
 
     logit q(e, t) = a(e) + b(peer(e, t), t): the Rasch model, fitted by maximum likelihood, one
-    Newton step of every row and of every column in turn (the log likelihood is concave).
+    Newton step of every row and of every column in turn (the log likelihood is concave). Where
+    the solution lies at infinity for some cells, those are found and held at their value.
 
     Parameters
     ----------
@@ -66,45 +84,114 @@ def fit_margins(
     ----------
     De Bie (2011), "Maximum entropy models and subjective interestingness", DMKD 23, sec. 3.
     """
-    n_groups = len(peers.names)
     spells = kernels.find_spells(is_open_et, peers.code_et)
-    windows_e, cells_e, windows_gt, cells_gt = kernels.totals(*spells, is_window_et, n_groups)
-    row_order, col_order = kernels.settle_sure(*spells, windows_e, cells_e, windows_gt, cells_gt)
+    counts = kernels.totals(*spells, is_window_et, len(peers.names))
+    row_order, col_order = kernels.settle_sure(*spells, *counts)
     is_row, is_col = row_order == 0, col_order == 0
-    target_e = np.where(is_row, windows_e, 1).astype(np.float64)
-    target_gt = np.where(is_col, windows_gt, 0).astype(np.float64)
+    odds = _Odds(spells, counts, is_row, is_col, start, n_workers)
+    fixed = None
+    if not odds.fit(PATIENCE):
+        is_free_et = _free_cells(is_open_et, is_window_et, peers, is_row, is_col)
+        is_fixed_et = is_open_et & ~is_free_et
+        is_fixed_et[~is_row] = False
+        is_fixed_et &= np.take_along_axis(is_col, peers.code_et, axis=0)
+        if is_fixed_et.any():
+            fixed = is_fixed_et, is_window_et
+            spells = kernels.find_spells(is_free_et, peers.code_et)
+            counts = kernels.totals(*spells, is_window_et, len(peers.names))
+            is_row &= counts[1] > 0
+            is_col &= counts[3] > 0
+            odds = _Odds(spells, counts, is_row, is_col, None, n_workers)
+        odds.fit(MOST_SWEEPS)
+    return Margins(
+        peers, odds.row, odds.column, row_order, col_order, fixed, odds.miss, odds.n_sweeps
+    )
 
-    n_open = max(1, int(cells_e[is_row].sum()))
-    overall = windows_e[is_row].sum() / n_open
-    share_e = windows_e / np.maximum(cells_e, 1)
-    share_gt = windows_gt / np.maximum(cells_gt, 1)
-    odds_e = np.where(is_row, share_e / np.maximum(1 - share_e, 1e-9), 0.0)
-    odds_gt = np.where(is_col, share_gt / np.maximum(1 - share_gt, 1e-9) / max(overall, 1e-12), 0.0)
-    if start is not None:
-        odds_e = np.where(is_row & (start.odds_e > 0), start.odds_e, odds_e)
-        odds_gt = np.where(is_col & (start.odds_gt > 0), start.odds_gt, odds_gt)
 
-    parts = _whole_entities(spells, CELLS_A_BLOCK)
-    sums = [(np.empty(odds_gt.shape), np.empty(odds_gt.shape)) for _ in parts]
+class _Odds:
+    """Odds of rows and columns, improved sweep by sweep."""
 
-    def sweep(i: int) -> float:
-        return kernels.row_sweep(*parts[i], *spells, odds_e, odds_gt, target_e, *sums[i])
+    def __init__(
+        self,
+        spells: tuple[np.ndarray, ...],
+        counts: tuple[np.ndarray, ...],
+        is_row: np.ndarray,
+        is_col: np.ndarray,
+        start: Margins | None,
+        n_workers: int,
+    ) -> None:
+        windows_e, cells_e, windows_gt, cells_gt = counts
+        self.spells, self.is_row, self.is_col, self.n_workers = spells, is_row, is_col, n_workers
+        self.target_e = np.where(is_row, windows_e, 1).astype(np.float64)
+        self.target_gt = np.where(is_col, windows_gt, 0).astype(np.float64)
+        overall = windows_e[is_row].sum() / max(1, int(cells_e[is_row].sum()))
+        row = windows_e / np.maximum(cells_e - windows_e, 1)
+        column = windows_gt / np.maximum(cells_gt - windows_gt, 1) / max(overall, 1e-12)
+        if start is not None:
+            row = np.where(start.odds_e > 0, start.odds_e, row)
+            column = np.where(start.odds_gt > 0, start.odds_gt, column)
+        self.row, self.column = np.where(is_row, row, 0.0), np.where(is_col, column, 0.0)
+        self.parts = _whole_entities(spells, CELLS_A_BLOCK)
+        self.sums = [(np.empty(column.shape), np.empty(column.shape)) for _ in self.parts]
+        self.miss, self.n_sweeps = 0.0, 0
 
-    miss, n_sweeps = 0.0, 0
-    if is_row.any():
-        while n_sweeps < MOST_SWEEPS:
-            n_sweeps += 1
-            miss = max(workers.in_order(sweep, range(len(parts)), n_workers))
-            sum_gt = np.add.reduce([part[0] for part in sums])
-            var_gt = np.add.reduce([part[1] for part in sums])
-            gap_gt = np.where(is_col, sum_gt - target_gt, 0.0)
-            miss = max(miss, float((np.abs(gap_gt) / np.maximum(target_gt, 1.0)).max()))
-            if miss < TOLERANCE:
-                break
+    def fit(self, most_sweeps: int) -> bool:
+        """Sweep until the totals agree; False if they do not within ``most_sweeps``."""
+        if not self.is_row.any():
+            return True
+        for _ in range(most_sweeps):
+            self.n_sweeps += 1
+            misses = workers.in_order(self._sweep_rows, range(len(self.parts)), self.n_workers)
+            sum_gt = np.add.reduce([part[0] for part in self.sums])
+            var_gt = np.add.reduce([part[1] for part in self.sums])
+            gap_gt = np.where(self.is_col, sum_gt - self.target_gt, 0.0)
+            self.miss = max(
+                *misses, float((np.abs(gap_gt) / np.maximum(self.target_gt, 1.0)).max())
+            )
+            if self.miss < TOLERANCE:
+                return True
             step_gt = np.zeros_like(gap_gt)
             np.divide(gap_gt, var_gt, out=step_gt, where=var_gt > 0)
-            odds_gt *= np.exp(np.clip(-step_gt, -2.0, 2.0))
-    return Margins(peers, odds_e, odds_gt, row_order, col_order, miss, n_sweeps)
+            self.column *= np.exp(np.clip(-step_gt, -2.0, 2.0))
+        return False
+
+    def _sweep_rows(self, part: int) -> float:
+        return kernels.row_sweep(
+            *self.parts[part], *self.spells, self.row, self.column, self.target_e, *self.sums[part]
+        )
+
+
+def _free_cells(
+    is_open_et: np.ndarray,
+    is_window_et: np.ndarray,
+    peers: Labels,
+    is_row: np.ndarray,
+    is_col: np.ndarray,
+) -> np.ndarray:
+    """Open cells of fitted rows and columns that can change without changing any margin.
+
+    Draw an arrow from row to column where the cell is set and from column to row where it is not.
+    Changing cells and keeping margins means turning round a cycle of arrows, so a cell is free
+    exactly if its row and column are strongly connected.
+    """
+    from scipy.sparse import coo_array
+    from scipy.sparse.csgraph import connected_components
+
+    n_entities, n_sessions = is_open_et.shape
+    entity, session = np.nonzero(is_open_et)
+    group = peers.code_et[entity, session].astype(np.int64)
+    kept = is_row[entity] & is_col[group, session]
+    entity, session, group = entity[kept], session[kept], group[kept]
+    column = n_entities + group * n_sessions + session
+    is_set = is_window_et[entity, session]
+    tail, head = np.where(is_set, entity, column), np.where(is_set, column, entity)
+    n_nodes = n_entities + len(peers.names) * n_sessions
+    arrows = coo_array((np.ones(tail.size, dtype=np.int8), (tail, head)), shape=(n_nodes, n_nodes))
+    _, part = connected_components(arrows.tocsr(), directed=True, connection="strong")
+    is_free_et = np.zeros(is_open_et.shape, dtype=bool)
+    is_free = part[entity] == part[column]
+    is_free_et[entity[is_free], session[is_free]] = True
+    return is_free_et
 
 
 def _whole_entities(spells: tuple[np.ndarray, ...], n_cells: int) -> list[tuple[int, int]]:
@@ -136,6 +223,21 @@ def judge_hits(
 
     blocks = workers.blocks(rows.size, ROWS_A_BLOCK)
     return np.concatenate([np.empty(0), *workers.in_order(judge, blocks, n_workers)])
+
+
+def cannot_pass(
+    hits: np.ndarray, expected: np.ndarray, variance: np.ndarray, level: float
+) -> np.ndarray:
+    """Whether P(X >= hits) is surely above ``level``, without working it out: bool, the shape of
+    ``hits``.
+
+    Two sure bounds: the median lies within one of the mean (Jogdeo & Samuels 1968), and the
+    normal tail is off by at most 0.56 / sd (Berry-Esseen with the constant of Shevtsova 2010; the
+    third absolute moment of a Bernoulli variable is at most its variance).
+    """
+    spread = np.sqrt(np.maximum(variance, 1e-300))
+    is_low = (hits <= np.floor(expected)) & (level < 0.5)
+    return is_low | (ndtr(-(hits - expected) / spread) - 0.56 / spread > level)
 
 
 class MarginsNull:

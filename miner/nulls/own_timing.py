@@ -41,7 +41,9 @@ class OwnTimingNull:
             share_e = is_window_et.sum(axis=1) / np.maximum(is_life_et.sum(axis=1), 1)
             place = np.array(members)
             expected[place] = [share_e[table.of(row)[0]].sum() for row in rows[place]]
-            p[place] = self._p_values(case, rows[place], hits[place], is_life_et, is_window_et, n_workers)
+            p[place] = self._p_values(
+                case, rows[place], hits[place], is_life_et, is_window_et, n_workers
+            )
         return Judgement(expected, p)
 
     def _p_values(
@@ -64,10 +66,18 @@ class OwnTimingNull:
         def judge(block: tuple[int, int]) -> np.ndarray:
             part = slice(*block)
             return kernels.shift_p_values(
-                rows[part], table.offset_c, table.entity, table.session, hits[part],
-                life_e, start_t, stop_t, window_e, window_t.astype(np.int32), n_sessions,
-            )  # fmt: skip
+                rows[part],
+                table.offset_c,
+                table.entity,
+                table.session,
+                hits[part],
+                life_e,
+                start_t,
+                stop_t,
+                window_e,
+                window_t.astype(np.int32),
+                n_sessions,
+            )
 
         blocks = workers.blocks(rows.size, ROWS_A_BLOCK)
         return np.concatenate([np.empty(0), *workers.in_order(judge, blocks, n_workers)])
-

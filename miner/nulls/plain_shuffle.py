@@ -33,7 +33,9 @@ class PlainShuffleNull:
         """
         unit, table = case.unit, case.unit.triggers
         combos = [table.combos[row] for row in rows]
-        observed = dict(zip(combos, zip(table.count_c[rows], case.hits_c[rows], strict=True), strict=True))
+        observed = dict(
+            zip(combos, zip(table.count_c[rows], case.hits_c[rows], strict=True), strict=True)
+        )
         shuffler = _Shuffler(unit.segment.panel)
 
         def draw(i: int) -> dict[Combo, tuple[int, int]]:
@@ -45,7 +47,7 @@ class PlainShuffleNull:
         for drawn in workers.in_order(draw, range(self.n_draws), n_workers):
             for combo, (n, h) in drawn.items():
                 n_seen, h_seen = observed[combo]
-                exceed[combo] += int(h * n_seen >= h_seen * n)
+                exceed[combo] += int(n > 0 and h * n_seen >= h_seen * n)
                 total[combo] += h / n if n else 0.0
         expected = [total[c] / max(1, self.n_draws) * observed[c][0] for c in combos]
         p = [(1 + exceed[c]) / (1 + self.n_draws) for c in combos]
@@ -70,10 +72,17 @@ class _Shuffler:
     def draw(self, rng: np.random.Generator) -> np.ndarray:
         length = self.length_e[self.entity]
         place = self.start_e[self.entity] + (rng.random(self.entity.size) * length).astype(np.int64)
-        session = np.where(length > 0, self.life[np.minimum(place, self.life.size - 1)], self.session)
+        session = np.where(
+            length > 0, self.life[np.minimum(place, self.life.size - 1)], self.session
+        )
         panel = self.panel
         return pack_alerts(
-            self.entity, self.type, session, panel.n_entities, len(panel.type_names), panel.n_sessions
+            self.entity,
+            self.type,
+            session,
+            panel.n_entities,
+            len(panel.type_names),
+            panel.n_sessions,
         )
 
 
@@ -83,9 +92,16 @@ def _recount(
     """Triggers and hits of combinations on redrawn alerts."""
     unit, panel = case.unit, case.unit.segment.panel
     shuffled = Panel(
-        panel.entity_names, panel.type_names, panel.n_sessions, alert_ekw, panel.events,
-        panel.cover_eqw, panel.class_k, panel.strata, panel.peers,
-    )  # fmt: skip
+        panel.entity_names,
+        panel.type_names,
+        panel.n_sessions,
+        alert_ekw,
+        panel.events,
+        panel.cover_eqw,
+        panel.class_k,
+        panel.strata,
+        panel.peers,
+    )
     segment = Segment(shuffled, unit.segment.first, unit.segment.last)
     table = find_triggers(
         segment, combos, unit.code, lookback=unit.lookback, horizon=unit.horizon, rest=unit.rest

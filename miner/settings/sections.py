@@ -58,8 +58,10 @@ class GroupSettings(TableSettings):
 
 
 def _kind(calendar: str) -> Kind:
-    if calendar == "weekdays" or calendar == "daily":
-        return calendar
+    if calendar == "weekdays":
+        return "weekdays"
+    if calendar == "daily":
+        return "daily"
     return "dates" if calendar.lower().endswith(".csv") else "exchange"
 
 

@@ -8,12 +8,35 @@ from .nulls import own_timing
 from .verdicts import judge_rules
 from .world import World, base_rate, discovery, eligible_triggers, followed, text
 
-COLUMNS = (
-    "target stratum combination size triggers hits precision precision_low precision_high "
-    "base_rate expected_hits lift p_value q_value p_own_timing rule_order sharpens explained_by "
-    "holdout_triggers holdout_hits holdout_precision holdout_low holdout_high holdout_base_rate "
-    "holdout_expected_hits holdout_p_value verdict"
-).split()
+COLUMNS = [
+    "target",
+    "stratum",
+    "combination",
+    "size",
+    "triggers",
+    "hits",
+    "precision",
+    "precision_low",
+    "precision_high",
+    "base_rate",
+    "expected_hits",
+    "lift",
+    "p_value",
+    "q_value",
+    "p_own_timing",
+    "rule_order",
+    "sharpens",
+    "explained_by",
+    "holdout_triggers",
+    "holdout_hits",
+    "holdout_precision",
+    "holdout_low",
+    "holdout_high",
+    "holdout_base_rate",
+    "holdout_expected_hits",
+    "holdout_p_value",
+    "verdict",
+]
 
 
 def hunt(world: World, fdr: float, alpha: float, adjust: str = "bh") -> list[dict[str, Any]]:

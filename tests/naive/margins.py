@@ -34,18 +34,17 @@ def peel(open_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:
 
 def forced_cells(open_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:
     """Open cells with one value in every table of these margins, by walking the arrows."""
-    n_rows, n_columns = open_rc.shape
-    arrow = np.zeros((n_rows + n_columns,) * 2, dtype=bool)
-    arrow[:n_rows, n_rows:] = open_rc & z_rc
-    arrow[n_rows:, :n_rows] = (open_rc & ~z_rc).T
-    reach = arrow | np.eye(len(arrow), dtype=bool)
-    while True:  # square the walks until they stop growing
-        longer = (reach.astype(np.float32) @ reach.astype(np.float32)) > 0
-        if (longer == reach).all():
+    ones, zeros = (open_rc & z_rc).astype(int), (open_rc & ~z_rc).astype(int)
+    reach = np.eye(len(ones), dtype=int)  # row to row, through any number of columns
+    while True:
+        further = ((reach + reach @ (ones @ zeros.T)) > 0).astype(int)
+        if (further == reach).all():
             break
-        reach = longer
-    both_ways = reach & reach.T
-    return open_rc & ~both_ways[:n_rows, n_rows:]
+        reach = further
+    column_to_row = (zeros.T @ reach).T > 0
+    row_to_column = (reach @ ones) > 0
+    is_free = np.where(z_rc, column_to_row, row_to_column)
+    return np.asarray(open_rc & ~is_free)
 
 
 def fit_free(free_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:

@@ -30,8 +30,17 @@ from miner.time_split import discovery_slice, holdout_slice
 from miner.walk_forward import FoldRule, walk_forward
 from miner.wording import combination_name
 
-PACKAGES = ("combination-signal-miner", "numpy", "scipy", "pandas", "scikit-learn", "mlxtend",
-            "numba", "pyarrow", "exchange_calendars")  # fmt: skip
+PACKAGES = (
+    "combination-signal-miner",
+    "numpy",
+    "scipy",
+    "pandas",
+    "scikit-learn",
+    "mlxtend",
+    "numba",
+    "pyarrow",
+    "exchange_calendars",
+)
 
 
 @dataclass(frozen=True)
@@ -94,14 +103,15 @@ def split_sessions(inputs: Inputs) -> tuple[int, int]:
     if last + 1 < needed or n_sessions - first < needed:
         raise SettingsError(
             explain(
-                "[holdout]", said,
+                "[holdout]",
+                said,
                 f"leave at least {needed} sessions on either side of the {holdout.embargo}-session "
                 "embargo",
                 f"{max(last + 1, 0)} before and {max(n_sessions - first, 0)} from it on, of "
                 f"{n_sessions} sessions in all",
                 "Move the start, or widen [sessions] start and end.",
             )
-        )  # fmt: skip
+        )
     return last, first
 
 
@@ -147,10 +157,14 @@ def hunt(
     rules = found.chosen()
     with stages.stage("holdout"):
         outcomes = judge_holdout(
-            holdout_slice(panel, first, panel.n_sessions - 1), rules, alpha=study.holdout.alpha,
-            lookback=windows.lookback, horizon=windows.horizon, rest=windows.rest,
+            holdout_slice(panel, first, panel.n_sessions - 1),
+            rules,
+            alpha=study.holdout.alpha,
+            lookback=windows.lookback,
+            horizon=windows.horizon,
+            rest=windows.rest,
             n_workers=n_workers,
-        )  # fmt: skip
+        )
     with stages.stage("own timing and intervals"):
         candidates = candidates_table(found, outcomes, n_workers)
     with stages.stage("walk-forward"):
@@ -182,15 +196,22 @@ def hunt(
             "holdout_sessions": panel.n_sessions - first,
         },
         "inputs": inputs.fingerprints,
-        "counts": {"tables": inputs.counts, "entities": panel.n_entities,
-                   "alert_types": len(panel.type_names)} | _counts(found, outcomes, testing.fdr),
+        "counts": {
+            "tables": inputs.counts,
+            "entities": panel.n_entities,
+            "alert_types": len(panel.type_names),
+        }
+        | _counts(found, outcomes, testing.fdr),
         "margins": [
             {
-                "target": f.case.target, "stratum": f.case.unit.stratum,
-                "sweeps": f.margins.n_sweeps, "largest_miss": f.margins.miss,
-                "events": int(f.case.events[0].size), "family": f.size,
-                "proposed": f.n_proposed, "base_rate": _open_rate(f.case.unit.is_open_et,
-                                                                  f.case.is_window_et),
+                "target": f.case.target,
+                "stratum": f.case.unit.stratum,
+                "sweeps": f.margins.n_sweeps,
+                "largest_miss": f.margins.miss,
+                "events": int(f.case.events[0].size),
+                "family": f.size,
+                "proposed": f.n_proposed,
+                "base_rate": _open_rate(f.case.unit.is_open_et, f.case.is_window_et),
             }
             for f in found.found
         ],
@@ -220,11 +241,17 @@ def hunt(
             for number, (until, start, stop) in enumerate(folds, start=1)
         ],
         "seconds": stages.seconds,
-    }  # fmt: skip
+    }
     result = Hunt(
-        candidates, rules_table(candidates), quarters, _walk_table(inputs, fold_rules), shuffled,
-        record, inputs.set_aside, None if output is None else Path(output),
-    )  # fmt: skip
+        candidates,
+        rules_table(candidates),
+        quarters,
+        _walk_table(inputs, fold_rules),
+        shuffled,
+        record,
+        inputs.set_aside,
+        None if output is None else Path(output),
+    )
     if output is not None:
         progress("writing")
         run_folder.write(result, Path(output), replace)
@@ -265,18 +292,25 @@ def _step(
         "stratum": chosen.stratum,
         "combination": combination_name(panel, chosen.combo),
         "step": {
-            "triggers": rule.triggers, "hits": rule.hits, "expected_hits": rule.expected,
-            "standardised_excess": rule.excess, "p": rule.p, "adjusted": rule.adjusted,
+            "triggers": rule.triggers,
+            "hits": rule.hits,
+            "expected_hits": rule.expected,
+            "standardised_excess": rule.excess,
+            "p": rule.p,
+            "adjusted": rule.adjusted,
         },
         "instead_of": None if rule.instead_of is None else combination_name(panel, rule.instead_of),
         "sharpens": None if chosen.sharpens is None else combination_name(panel, chosen.sharpens),
         "p_sharper": rule.p_sharper,
         "explains": explained,
         "holdout": {
-            "p_holm": outcome.p_holm, "power": outcome.power, "p_sharper": outcome.p_sharper,
-            "too_few_clusters": outcome.is_few, "verdict": outcome.verdict,
+            "p_holm": outcome.p_holm,
+            "power": outcome.power,
+            "p_sharper": outcome.p_sharper,
+            "too_few_clusters": outcome.is_few,
+            "verdict": outcome.verdict,
         },
-    }  # fmt: skip
+    }
 
 
 def _walk_table(inputs: Inputs, rows: list[FoldRule]) -> pd.DataFrame:
@@ -298,9 +332,20 @@ def _walk_table(inputs: Inputs, rows: list[FoldRule]) -> pd.DataFrame:
             }
             for row in rows
         ],
-        columns=["fold", "found_until", "judged_from", "judged_to", "target", "stratum",
-                 "combination", "triggers", "hits", "expected_hits", "p_value"],
-    )  # fmt: skip
+        columns=[
+            "fold",
+            "found_until",
+            "judged_from",
+            "judged_to",
+            "target",
+            "stratum",
+            "combination",
+            "triggers",
+            "hits",
+            "expected_hits",
+            "p_value",
+        ],
+    )
 
 
 def _plain_shuffle(found: Search, study: Study, n_workers: int) -> pd.DataFrame:

@@ -1,0 +1,5 @@
+"""``python -m miner``."""
+
+from miner.cli import main
+
+main()

@@ -1,0 +1,258 @@
+"""Plain-text screens: what a hunt and a check print. Formats; computes no statistic."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterator, Sequence
+from typing import TYPE_CHECKING, Any
+
+import pandas as pd
+
+from miner.columns import CONFIRMED, POOLED
+
+if TYPE_CHECKING:
+    from miner.checking import Check
+    from miner.hunting import Hunt
+
+WIDTH = 100
+LABEL = 14
+
+CAUTIONS = (
+    "Research, not advice: past precision does not promise any to come. Alerts ahead of corporate "
+    "events can reflect leaked information: involve compliance before acting on a rule. Local "
+    "rules and licensed practice come first."
+)
+
+
+def percent(share: float, digits: int | None = None) -> str:
+    """A share as per cent, with more digits where it is small; "-" where undefined."""
+    if pd.isna(share):
+        return "-"
+    if digits is None:
+        digits = 0 if share >= 0.1 else 1 if share >= 0.01 else 2
+    return f"{100 * share:.{digits}f} %"
+
+
+def p_text(p: float) -> str:
+    """A p-value; what lies below 1e-300 is only known to."""
+    return "< 1e-300" if p <= 1e-300 else f"{p:.2g}"
+
+
+def entry(label: str, text: str) -> str:
+    """A labelled paragraph of the summary."""
+    return textwrap.fill(
+        text, WIDTH, initial_indent=f"{label:<{LABEL}}", subsequent_indent=" " * LABEL
+    )
+
+
+def hunt_lines(result: Hunt) -> Iterator[str]:
+    """One screen: what was read, the funnel, the placebo, then one entry a rule."""
+    record = result.record
+    counts, split, settings = record["counts"], record["split"], record["settings"]
+    calendar = record["calendar"]
+    yield f"{record['study']}: {calendar['first']} to {calendar['last']}, " + (
+        f"{calendar['sessions']:,} sessions ({calendar['name']}, {calendar['timezone']})"
+    )
+    yield ""
+    yield entry("Read", read_text(counts["tables"], counts["entities"], counts["alert_types"]))
+    yield entry(
+        "Split",
+        f"discovery to {split['discovery_last']} ({split['discovery_sessions']:,} sessions), "
+        f"holdout from {split['holdout_first']} ({split['holdout_sessions']:,}), "
+        f"{split['embargo']} between",
+    )
+    horizon = settings["windows"]["horizon"]
+    yield entry(
+        "Base rate",
+        f"within {horizon} sessions: "
+        + "; ".join(
+            f"{_of(unit['target'], unit['stratum'])} {percent(unit['base_rate'])}"
+            for unit in record["margins"]
+            if unit["base_rate"] is not None
+        ),
+    )
+    minimum, fdr = settings["mining"]["min_triggers"], settings["testing"]["fdr"]
+    yield entry(
+        "Family",
+        f"{counts['family']:,} combinations with at least {minimum} triggers, looked at or not; "
+        f"{counts['candidates']:,} of them proposed by the windows before events",
+    )
+    adjust = settings["testing"]["adjust"]
+    others = [f"{n:,} by {how}" for how, n in counts["passed"].items() if how != adjust]
+    yield entry(
+        "Passed",
+        f"{counts['passed'].get(adjust, 0):,} beat the margins null at {percent(fdr)} ({adjust}"
+        + (f"; {', '.join(others)})" if others else ")"),
+    )
+    yield entry("Rules", f"{counts['rules']} explain all of them")
+    yield entry("Confirmed", f"{counts['confirmed']} held on the holdout")
+    placebo = record["placebo"]
+    if placebo["worlds"]:
+        yield entry(
+            "Placebo",
+            f"the same hunt finds {placebo['mean_rules']:.2g} rules on average in "
+            f"{placebo['worlds']} worlds with nothing to find (any in "
+            f"{percent(placebo['share_with_any'])} of them)",
+        )
+    yield from _walk_text(record)
+    for warning in record["warnings"]:
+        yield entry("Note", warning)
+    yield ""
+    if result.rules.empty:
+        yield "No rule: nothing precedes the events more often than chance, the calendar and busy"
+        yield "names explain. Most hunts end like this."
+    else:
+        yield from rule_lines(result.rules, record["rules"], horizon)
+    yield ""
+    yield textwrap.fill(CAUTIONS, WIDTH)
+    if result.folder is not None:
+        yield ""
+        yield f"Written to {result.folder}"
+
+
+def read_text(tables: dict[str, dict[str, int]], n_entities: int, n_types: int) -> str:
+    """What was read and set aside, in words."""
+    alerts, events = tables["alerts"], tables["events"]
+    text = (
+        f"{alerts['used']:,} alerts of {n_types} types and {events['used']:,} events on "
+        f"{n_entities:,} entities"
+    )
+    aside = [
+        f"{count[reason]:,} {name} {words}"
+        for name, count in tables.items()
+        for reason, words in (
+            ("outside calendar", "outside the calendar"),
+            ("unknown entity", "of unknown entities"),
+            ("unreadable", "unreadable"),
+        )
+        if count.get(reason)
+    ]
+    return text + (f"; set aside: {', '.join(aside)}" if aside else "")
+
+
+def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]], horizon: int) -> Iterator[str]:
+    """One entry a rule: what it is, what the holdout says, where discovery saw it."""
+    for rule, step in zip(rules.to_dict("records"), steps, strict=True):
+        head = f"{rule['rule_order']}. {rule['combination']}"
+        if rule["stratum"] != POOLED:
+            head += f" ({rule['stratum']})"
+        held = step["holdout"]
+        if rule["holdout_triggers"]:
+            expected = rule["holdout_expected_hits"] / rule["holdout_triggers"]
+            holdout = (
+                f"{percent(rule['holdout_precision'])} hit in the holdout "
+                f"({rule['holdout_hits']} of {rule['holdout_triggers']} triggers; "
+                f"{percent(rule['holdout_low'])} to {percent(rule['holdout_high'])}"
+                + (", too few clusters" if held["too_few_clusters"] else "")
+                + f") where {percent(expected)} was expected"
+            )
+        else:
+            holdout = "no trigger in the holdout"
+        verdict = rule["verdict"]
+        verdict = verdict.upper() if verdict == CONFIRMED else verdict
+        text = (
+            f"{head}: {rule['target']} within {horizon} sessions - {verdict}: {holdout}; "
+            f"discovery {percent(rule['precision'])} ({rule['hits']} of {rule['triggers']}, lift "
+            f"{rule['lift']:.1f})"
+        )
+        if rule["sharpens"]:
+            text += f"; sharpens {rule['sharpens']}"
+            if held["p_sharper"] is not None:
+                text += f" (p {p_text(held['p_sharper'])} in the holdout)"
+        if step["explains"]:
+            text += f"; explains {step['explains']} more that passed"
+        if rule["p_own_timing"] > 0.05:
+            text += (
+                f"; beware: the entities' own timing explains it (p {p_text(rule['p_own_timing'])})"
+            )
+        yield textwrap.fill(text, WIDTH, subsequent_indent="   ")
+
+
+def _walk_text(record: dict[str, Any]) -> Iterator[str]:
+    folds = record["walk_forward"]
+    if folds:
+        n = sum(fold["rules"] for fold in folds)
+        hits = sum(fold["hits"] for fold in folds)
+        triggers = sum(fold["triggers"] for fold in folds)
+        expected = sum(fold["expected_hits"] for fold in folds)
+        text = f"{len(folds)} folds found {n} rules"
+        if triggers:
+            text += (
+                f"; on the fold after, {hits} of {triggers} triggers hit ({expected:.1f} expected)"
+            )
+        yield entry("Walk-forward", text)
+
+
+def _of(target: str, stratum: str) -> str:
+    return target if stratum == POOLED else f"{target} ({stratum})"
+
+
+def check_lines(result: Check) -> Iterator[str]:
+    """What ``miner check`` prints."""
+    record = result.record
+    yield f"{record['study']}: {record['first']} to {record['last']}, " + (
+        f"{record['sessions']:,} sessions ({record['calendar']}, {record['timezone']})"
+    )
+    yield ""
+    yield entry("Read", read_text(record["tables"], record["entities"], len(result.types)))
+    yield entry(
+        "Split",
+        f"discovery to {record['discovery_last']}, holdout from {record['holdout_first']}",
+    )
+    yield entry("Family", f"{record['family']:,} combinations have enough triggers in discovery")
+    yield ""
+    yield "Alert types: distinct alerts, entities with any of those covered, and the share followed"
+    yield "by another of the same type and entity within the look-back"
+    rows = [
+        (
+            row.type,
+            f"{row.alerts:,}",
+            f"{row.entities:,} of {row.entities_covered:,}",
+            percent(row.followed_within_lookback),
+        )
+        for row in result.types.itertuples()
+    ]
+    yield from aligned(("type", "alerts", "entities", "followed"), rows)
+    yield ""
+    yield "Targets: events and base rate in discovery and in the holdout"
+    rows = [
+        (
+            _of(row.target, row.stratum),
+            f"{row.family:,}",
+            f"{row.events_discovery:,}",
+            percent(row.base_rate_discovery),
+            f"{row.events_holdout:,}",
+            percent(row.base_rate_holdout),
+        )
+        for row in result.targets.itertuples()
+    ]
+    yield from aligned(("target", "family", "events", "base rate", "held out", "base rate"), rows)
+    yield ""
+    yield (
+        f"Power: smallest precision that passes discovery at {percent(record['fdr'])} as the only "
+        "finding, and"
+    )
+    yield f"the holdout at {percent(record['alpha'])} as the only rule, at the base rates above"
+    counts = sorted(result.power["triggers"].unique())
+    rows = []
+    for (target, stratum), part in result.power.groupby(["target", "stratum"], sort=False):
+        for stage, column in (
+            ("discovery", "precision_discovery"),
+            ("holdout", "precision_holdout"),
+        ):
+            rows.append((_of(target, stratum), stage, *(percent(x) for x in part[column])))
+    yield from aligned(("target", "", *(f"{n} triggers" for n in counts)), rows)
+    yield ""
+    for warning in result.warnings:
+        yield textwrap.fill(f"! {warning}", WIDTH, subsequent_indent="  ")
+    if not result.warnings:
+        yield "Nothing looks wrong."
+
+
+def aligned(header: Sequence[str], rows: Sequence[Sequence[str]]) -> Iterator[str]:
+    """Rows under a header, first column to the left, the others to the right."""
+    widths = [max(len(row[i]) for row in (header, *rows)) for i in range(len(header))]
+    for row in (header, *rows):
+        first = f"  {row[0]:<{widths[0]}}"
+        rest = "".join(f"  {cell:>{w}}" for cell, w in zip(row[1:], widths[1:], strict=True))
+        yield (first + rest).rstrip()
