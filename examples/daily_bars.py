@@ -68,7 +68,6 @@ source = "coverage.csv"
 
 [sessions]
 calendar = "XNYS"
-close = "16:00"
 timezone = "America/New_York"
 start = "1990-01-02"
 end = "2022-12-28"

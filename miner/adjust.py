@@ -1,4 +1,4 @@
-"""Adjustments for having looked at many combinations: false discovery rate and family-wise error."""
+"""Adjustments for having looked at many combinations: false discoveries, family-wise error."""
 
 from __future__ import annotations
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -88,8 +88,8 @@ def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> 
     n_sessions = len(calendar.dates)
 
     progress("placing on sessions")
-    tables = [table for table in (groups, coverage) if table is not None]
-    known = tables or [alert_log, event_log]
+    spans = [table for table in (groups, coverage) if table is not None]
+    known: Sequence[Log | SpanTable] = spans or [alert_log, event_log]
     entity_names = tuple(sorted({name for table in known for name in _used_names(table)}))
     alerts = _code(alert_log, entity_names, calendar)
     events = _code(event_log, entity_names, calendar)
@@ -229,7 +229,7 @@ def _groups(
     n_entities, n_sessions = len(entity_names), len(calendar.dates)
     labelled: dict[str, Labels] = {}
     if groups is not None and study.groups is not None:
-        for column in {study.groups.strata, study.groups.peers} - {None}:
+        for column in study.groups.label_columns:
             spans = _spans(groups, column, entity_names, calendar)
             if len(spans.names) > MOST_LABELS:
                 raise TableError(
@@ -242,8 +242,8 @@ def _groups(
                     )
                 )
             labelled[column] = _without_empty(label_sessions(spans, n_entities, n_sessions))
-        strata = labelled.get(study.groups.strata)
-        peers = labelled.get(study.groups.peers, strata)
+        strata = labelled[study.groups.strata] if study.groups.strata else None
+        peers = labelled[study.groups.peers] if study.groups.peers else None
         return strata, as_peers(peers, n_entities, n_sessions)
     return None, as_peers(None, n_entities, n_sessions)
 

@@ -96,7 +96,7 @@ def split_sessions(inputs: Inputs) -> tuple[int, int]:
         first = int(inputs.calendar.index_of_date(holdout.start))
         said = f"start = {holdout.start}"
     else:
-        first = n_sessions - round(holdout.share * n_sessions)
+        first = n_sessions - round((holdout.share or 0.0) * n_sessions)
         said = f"share = {holdout.share}"
     last = first - holdout.embargo - 1
     needed = windows.lookback + windows.horizon

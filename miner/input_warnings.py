@@ -105,7 +105,9 @@ def _events(inputs: Inputs, early: list[Case], late: list[Case]) -> Iterator[str
         if a.events[0].size < FEW_EVENTS_DISCOVERY:
             yield f"{where}: only {a.events[0].size} events in discovery; little can be found."
         if b.events[0].size < FEW_EVENTS_HOLDOUT:
-            yield f"{where}: only {b.events[0].size} events in the holdout; little can be confirmed."
+            yield (
+                f"{where}: only {b.events[0].size} events in the holdout; little can be confirmed."
+            )
         seen[a.target] = seen.get(a.target, 0) + a.events[0].size
     panel = inputs.panel
     if not panel.cover_eqw.any():

@@ -51,7 +51,7 @@ def judge_on(
     rest: int,
     n_workers: int = 1,
 ) -> Judged:
-    """Judge combinations of one target and stratum on a segment, with the margins refitted in it."""
+    """Judge combinations of one target and stratum on a segment, margins refitted in it."""
     table = triggers.find_triggers(
         segment, combos, code, lookback=lookback, horizon=horizon, rest=rest, n_workers=n_workers
     )

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
-from miner.columns import CONFIRMED, POOLED
+from miner.columns import POOLED
 
 if TYPE_CHECKING:
     from miner.checking import Check
@@ -29,8 +29,8 @@ def percent(share: float, digits: int | None = None) -> str:
     if pd.isna(share):
         return "-"
     if digits is None:
-        digits = 0 if share >= 0.1 else 1 if share >= 0.01 else 2
-    return f"{100 * share:.{digits}f} %"
+        digits = 0 if share >= 0.1 or share == 0 else 1 if share >= 0.01 else 2
+    return f"{100 * share:.{digits}f}%"
 
 
 def p_text(p: float) -> str:
@@ -102,7 +102,8 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
         yield "No rule: nothing precedes the events more often than chance, the calendar and busy"
         yield "names explain. Most hunts end like this."
     else:
-        yield from rule_lines(result.rules, record["rules"], horizon)
+        yield f"Rules: share of triggers with the event within {horizon} sessions (95% interval)"
+        yield from rule_lines(result.rules, record["rules"])
     yield ""
     yield textwrap.fill(CAUTIONS, WIDTH)
     if result.folder is not None:
@@ -130,42 +131,58 @@ def read_text(tables: dict[str, dict[str, int]], n_entities: int, n_types: int) 
     return text + (f"; set aside: {', '.join(aside)}" if aside else "")
 
 
-def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]], horizon: int) -> Iterator[str]:
-    """One entry a rule: what it is, what the holdout says, where discovery saw it."""
-    for rule, step in zip(rules.to_dict("records"), steps, strict=True):
-        head = f"{rule['rule_order']}. {rule['combination']}"
-        if rule["stratum"] != POOLED:
-            head += f" ({rule['stratum']})"
-        held = step["holdout"]
-        if rule["holdout_triggers"]:
-            expected = rule["holdout_expected_hits"] / rule["holdout_triggers"]
-            holdout = (
-                f"{percent(rule['holdout_precision'])} hit in the holdout "
-                f"({rule['holdout_hits']} of {rule['holdout_triggers']} triggers; "
-                f"{percent(rule['holdout_low'])} to {percent(rule['holdout_high'])}"
-                + (", too few clusters" if held["too_few_clusters"] else "")
-                + f") where {percent(expected)} was expected"
-            )
-        else:
-            holdout = "no trigger in the holdout"
-        verdict = rule["verdict"]
-        verdict = verdict.upper() if verdict == CONFIRMED else verdict
-        text = (
-            f"{head}: {rule['target']} within {horizon} sessions - {verdict}: {holdout}; "
-            f"discovery {percent(rule['precision'])} ({rule['hits']} of {rule['triggers']}, lift "
-            f"{rule['lift']:.1f})"
+def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]]) -> Iterator[str]:
+    """The rules in the order found; a combination found in several strata is told once.
+
+    Under each combination one line a stratum: verdict, holdout, expectation, discovery.
+    """
+    table = rules.to_dict("records")
+    told: set[tuple[str, str]] = set()
+    width = max(len(rule["stratum"]) for rule in table)
+    for rule in table:
+        key = rule["target"], rule["combination"]
+        if key in told:
+            continue
+        told.add(key)
+        yield f"{rule['rule_order']:>3}. {rule['combination']} -> {rule['target']}"
+        for same, step in zip(table, steps, strict=True):
+            if (same["target"], same["combination"]) == key:
+                yield from _stratum_lines(same, step, width)
+
+
+def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> Iterator[str]:
+    n = rule["holdout_triggers"]
+    if n:
+        holdout = (
+            f"holdout {percent(rule['holdout_precision'])} of {n} "
+            f"({percent(rule['holdout_low'])} to {percent(rule['holdout_high'])}), "
+            f"{percent(rule['holdout_expected_hits'] / n)} expected"
         )
-        if rule["sharpens"]:
-            text += f"; sharpens {rule['sharpens']}"
-            if held["p_sharper"] is not None:
-                text += f" (p {p_text(held['p_sharper'])} in the holdout)"
-        if step["explains"]:
-            text += f"; explains {step['explains']} more that passed"
-        if rule["p_own_timing"] > 0.05:
-            text += (
-                f"; beware: the entities' own timing explains it (p {p_text(rule['p_own_timing'])})"
-            )
-        yield textwrap.fill(text, WIDTH, subsequent_indent="   ")
+    else:
+        holdout = "no trigger in the holdout"
+    yield (
+        f"     {rule['stratum']:<{width}}  {rule['verdict']:<12}  {holdout}; "
+        f"discovery {percent(rule['precision'])} of {rule['triggers']}"
+    )
+    notes = []
+    if rule["sharpens"]:
+        p = step["holdout"]["p_sharper"]
+        notes.append(
+            f"sharpens {rule['sharpens']}" + (f" (p {p_text(p)} in the holdout)" if p else "")
+        )
+    if step["explains"]:
+        notes.append(f"explains {step['explains']} more that passed")
+    if step["holdout"]["too_few_clusters"] and n:
+        notes.append("too few clusters for a close interval")
+    if rule["p_own_timing"] > 0.05:
+        notes.append(
+            f"beware: the entities' own timing explains it (p {p_text(rule['p_own_timing'])})"
+        )
+    if notes:
+        indent = " " * (9 + width)
+        yield textwrap.fill(
+            "; ".join(notes), WIDTH, initial_indent=indent, subsequent_indent=indent
+        )
 
 
 def _walk_text(record: dict[str, Any]) -> Iterator[str]:
@@ -203,7 +220,7 @@ def check_lines(result: Check) -> Iterator[str]:
     yield ""
     yield "Alert types: distinct alerts, entities with any of those covered, and the share followed"
     yield "by another of the same type and entity within the look-back"
-    rows = [
+    type_rows = [
         (
             row.type,
             f"{row.alerts:,}",
@@ -212,7 +229,7 @@ def check_lines(result: Check) -> Iterator[str]:
         )
         for row in result.types.itertuples()
     ]
-    yield from aligned(("type", "alerts", "entities", "followed"), rows)
+    yield from aligned(("type", "alerts", "entities", "followed"), type_rows)
     yield ""
     yield "Targets: events and base rate in discovery and in the holdout"
     rows = [
@@ -234,14 +251,14 @@ def check_lines(result: Check) -> Iterator[str]:
     )
     yield f"the holdout at {percent(record['alpha'])} as the only rule, at the base rates above"
     counts = sorted(result.power["triggers"].unique())
-    rows = []
+    power_rows: list[tuple[str, ...]] = []
     for (target, stratum), part in result.power.groupby(["target", "stratum"], sort=False):
         for stage, column in (
             ("discovery", "precision_discovery"),
             ("holdout", "precision_holdout"),
         ):
-            rows.append((_of(target, stratum), stage, *(percent(x) for x in part[column])))
-    yield from aligned(("target", "", *(f"{n} triggers" for n in counts)), rows)
+            power_rows.append((_of(target, stratum), stage, *(percent(x) for x in part[column])))
+    yield from aligned(("target", "", *(f"{n} triggers" for n in counts)), power_rows)
     yield ""
     for warning in result.warnings:
         yield textwrap.fill(f"! {warning}", WIDTH, subsequent_indent="  ")

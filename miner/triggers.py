@@ -120,7 +120,7 @@ def _table(
             count_c += np.bincount(chosen, minlength=len(level))
         is_kept = count_c >= min_triggers
         kept_levels.append((streams, masks, is_kept))
-        combos += [level[c] for c in np.flatnonzero(is_kept)]
+        combos += [combo for combo, kept in zip(level, is_kept, strict=True) if kept]
         counts.append(count_c[is_kept])
     offset_c = np.concatenate([[0], np.cumsum(np.concatenate(counts))]).astype(np.int64)
     entity = np.empty(offset_c[-1], dtype=np.int32)

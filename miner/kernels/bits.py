@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numba import types
 from numba.extending import intrinsic
@@ -13,7 +15,7 @@ ALL = np.uint64(0xFFFFFFFFFFFFFFFF)
 
 
 @intrinsic
-def popcount(typing_context, word):  # type: ignore[no-untyped-def]
+def _popcount(typing_context, word):  # type: ignore[no-untyped-def]
     """Number of set bits of a uint64."""
 
     def codegen(context, builder, signature, args):  # type: ignore[no-untyped-def]
@@ -23,13 +25,17 @@ def popcount(typing_context, word):  # type: ignore[no-untyped-def]
 
 
 @intrinsic
-def lowest_bit(typing_context, word):  # type: ignore[no-untyped-def]
+def _lowest_bit(typing_context, word):  # type: ignore[no-untyped-def]
     """Position of the lowest set bit of a uint64 that is not zero."""
 
     def codegen(context, builder, signature, args):  # type: ignore[no-untyped-def]
         return builder.cttz(args[0], context.get_constant(types.boolean, True))
 
     return types.uint64(types.uint64), codegen
+
+
+popcount: Any = _popcount
+lowest_bit: Any = _lowest_bit
 
 
 def n_words(n_sessions: int) -> int:

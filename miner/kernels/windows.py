@@ -21,7 +21,7 @@ def mark_windows(event_entity, event_session, n_entities, n_sessions, horizon):
 
 @kernel
 def types_before(event_entity, event_session, alert_ekw, reach):
-    """Boolean [events, types]: the type alerted in the ``reach`` sessions before the event's own."""
+    """Boolean [events, types]: the type alerted in the ``reach`` sessions before the event."""
     n_types = alert_ekw.shape[1]
     is_seen_vk = np.zeros((event_entity.size, n_types), dtype=np.bool_)
     for v in range(event_entity.size):

@@ -90,7 +90,10 @@ class BadRows:
 
 
 def _text(value: pa.Scalar) -> str | None:
-    plain = value.as_py()
+    try:
+        plain = value.as_py()
+    except (OverflowError, ValueError):  # a timestamp beyond what Python's own can hold
+        plain = value.cast(pa.int64()).as_py()
     if isinstance(plain, bytes):
         return plain.decode("utf-8", "replace")
     return None if plain is None else str(plain)

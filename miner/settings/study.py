@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import tomllib
 from collections.abc import Mapping
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 from pathlib import Path
 from typing import Any
 
@@ -23,7 +23,6 @@ from .sections import (
     GroupSettings,
     HoldoutSettings,
     MiningSettings,
-    NameSettings,
     Section,
     SessionSettings,
     TableSettings,
@@ -107,25 +106,20 @@ def _build(raw: Mapping[str, Any], where: str, path: Path | None, folder: Path, 
         "study": _with_default(raw.get("study"), "name", stem),
         "holdout": _with_default(raw.get("holdout"), "embargo", _reach(raw.get("windows"))),
     }
-    parts = {name: read_section(name, raw.get(name), problems) for name in SECTIONS}
+    parts: dict[str, Any] = {name: read_section(name, raw.get(name), problems) for name in SECTIONS}
     for name, part in parts.items():
         if isinstance(part, TableSettings):
             check_table(name, part, problems)
-    sessions, windows, holdout, testing = (
-        parts[name] or SECTIONS[name]() for name in ("sessions", "windows", "holdout", "testing")
-    )
-    assert isinstance(sessions, SessionSettings) and isinstance(windows, WindowSettings)
-    assert isinstance(holdout, HoldoutSettings) and isinstance(testing, TestingSettings)
+    sessions: SessionSettings = parts["sessions"] or SessionSettings()
+    windows: WindowSettings = parts["windows"] or WindowSettings()
     check_sessions(sessions, problems)
-    check_holdout(holdout, sessions, windows, problems)
-    check_testing(testing, problems)
+    check_holdout(parts["holdout"] or HoldoutSettings(), sessions, windows, problems)
+    check_testing(parts["testing"] or TestingSettings(), problems)
     if problems.lines:
         raise SettingsError("\n".join(problems.lines))
-    named = parts.pop("study")
-    assert isinstance(named, NameSettings)
-    values: dict[str, Any] = dict(parts)
-    study = Study(path, folder, named.name, **values)
-    return Study(path, folder, named.name, **values, warnings=_warnings(study))
+    name = parts.pop("study").name
+    study = Study(path, folder, name, **parts)
+    return replace(study, warnings=_warnings(study))
 
 
 def _with_default(section: Any, key: str, value: Any) -> Any:
