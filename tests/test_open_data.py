@@ -109,15 +109,6 @@ def count_big_moves(sign: int) -> dict[str, list[int]]:
     return counts
 
 
-def hunt_quickly(study: Path) -> pd.DataFrame:
-    """The study's candidates; the parts of a run that these tests do not read are made small."""
-    text = study.read_text(encoding="utf-8")
-    assert text.count("seed = 7") == 1
-    small = "seed = 7\npermutations = 200\nplacebo = 1"
-    study.write_text(text.replace("seed = 7", small), encoding="utf-8")
-    return run_study(study)
-
-
 @pytest.fixture(scope="module")
 def bars_folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
     """Folder with the tables and settings of the studies on daily bars."""
@@ -129,7 +120,7 @@ def bars_folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 @pytest.mark.slow
 def test_hunt_on_bars_finds_that_big_moves_cluster(bars_folder: Path) -> None:
-    found = hunt_quickly(bars_folder / "big_moves.toml").set_index("combination")
+    found = run_study(bars_folder / "big_moves.toml").set_index("combination")
     for combination, sign in (("big fall", -1), ("big rise", 1)):
         row = found.loc[combination]
         counts = count_big_moves(sign)
@@ -159,7 +150,7 @@ def test_streaks_tell_no_direction(bars_folder: Path, tmp_path: Path) -> None:
         rows.to_csv(tmp_path / f"{table}.csv", index=False)
     study = tmp_path / "direction.toml"
     study.write_text((bars_folder / study.name).read_text(encoding="utf-8"), encoding="utf-8")
-    found = hunt_quickly(study)
+    found = run_study(study)
     assert set(found["combination"]) == set(daily_bars.STREAK_ALERTS)
     assert set(found["target"]) == {"up close", "down close"}
     assert (found["triggers"] > 1000).all()
@@ -169,7 +160,7 @@ def test_streaks_tell_no_direction(bars_folder: Path, tmp_path: Path) -> None:
 
 @pytest.mark.slow
 def test_weather_is_explained_by_the_airports_days(tmp_path: Path) -> None:
-    found = hunt_quickly(flights.write_tables(tmp_path))
+    found = run_study(flights.write_tables(tmp_path))
     singles = found[found["size"] == 1].set_index("combination")
     weather = singles[singles.index.str.startswith("weather: ")]
     assert len(weather) == 5
