@@ -40,7 +40,7 @@ from bar_rules import (
     read_bars,
     read_closes,
 )
-from open_data import new_folder, print_table, raw_ratio, run_study, stamps_of
+from open_data import new_folder, print_table, raw_ratio, run_study, say, stamps_of
 
 VOLATILITY_ALERTS = ["big fall", "big rise", "big week", "60-session low"]
 STREAK_ALERTS = ["down streak", "up streak"]
@@ -154,6 +154,14 @@ def read_big_moves(market: pd.DataFrame, sector: pd.DataFrame) -> None:
         }
     )
     print_table(table, "A big move within five sessions (1991 to 2006):")
+    fall = table[table["alert"] == "big fall"].iloc[0]
+    say(
+        f"After a big fall another big move came {fall['times usual']:.2f} times as often as on "
+        "any day. With the number of companies that have one ahead held fixed for every session "
+        f"it is {fall['times, market days held']:.2f} times; with that number held fixed in each "
+        f"sector, {fall['times, sector days held']:.2f}. The first step down is volatility that "
+        "the market shares, the second what a sector shares; what is left is the company's own."
+    )
     for title, run in (("market", market), ("sector", sector)):
         rules = run[run["rule_order"].notna()].sort_values("rule_order")
         columns = ["combination", "lift", "holdout_triggers", "holdout_precision", "verdict"]
@@ -166,8 +174,15 @@ def read_direction(direction: pd.DataFrame) -> None:
     streaks = direction[direction["combination"].isin(STREAK_ALERTS)]
     columns = ["target", "combination", "triggers", "precision", "base_rate", "lift", "p_value"]
     print_table(streaks[columns], "The next close after a streak (1991 to 2006):")
-    n_confirmed = int((direction["verdict"] == "confirmed").sum())
-    print(f"\nDirection: {n_confirmed} rules confirmed for an up or a down close.")
+    furthest = (streaks["precision"] - streaks["base_rate"]).abs().max()
+    is_rule = direction["rule_order"].notna()
+    say(
+        f"After a streak the next close is up or down at most {100 * furthest:.1f} percentage "
+        "points more or less often than usual; with every session's number of up or down closes "
+        f"held fixed the smallest of the four p-values is {streaks['p_value'].min():.2f}. Of all "
+        f"alerts and pairs of them, rules for direction on discovery: {int(is_rule.sum())}; "
+        f"confirmed afterwards: {int((direction['verdict'] == 'confirmed').sum())}."
+    )
 
 
 def main() -> None:

@@ -39,7 +39,7 @@ from flight_rules import (
     read_weather,
     weather_alerts,
 )
-from open_data import new_folder, print_table, raw_ratio, run_study
+from open_data import new_folder, print_table, raw_ratio, run_study, say
 
 STUDY = """\
 [study]
@@ -107,9 +107,18 @@ def read_run(candidates: pd.DataFrame) -> None:
     )
     title = "A mass cancellation within two days (January to early September):"
     print_table(table.sort_values("times usual", ascending=False), title)
+    snow = table[table["alert"] == "weather: snow"].iloc[0]
+    say(
+        f"After snow a mass cancellation came {snow['times usual']:.1f} times as often as usual; "
+        f"against each airline's own timing that looks certain (p {snow['p, own timing']:.1g}). "
+        f"With the airport's days held fixed it is {snow['times, airport days held']:.2f} times: "
+        "every airline there had the same snow, so it tells none of them apart."
+    )
     rules = candidates[candidates["rule_order"].notna()]
     if rules.empty:
-        print("\nNo rule: with the airport's days held fixed, no alert adds what chance would not.")
+        say(
+            "No rule: with the airport's days held fixed, no alert tells which airline will cancel."
+        )
         return
     judged = ["holdout_triggers", "holdout_hits", "holdout_p_value", "verdict"]
     columns = ["combination", "lift", *judged]

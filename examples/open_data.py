@@ -1,13 +1,14 @@
 """What the two studies on open data share: finding the data, running a hunt, reading a run.
 
-Hands on `data_file`, `stamps_of`, `new_folder`, `run_study`, `raw_ratio` and `print_table`. The
-data files are opened where their packages were installed; the packages themselves are not
+Hands on `data_file`, `stamps_of`, `new_folder`, `run_study`, `raw_ratio`, `print_table` and `say`.
+The data files are opened where their packages were installed; the packages themselves are not
 imported (two of them pull in much that is not needed here).
 """
 
 from __future__ import annotations
 
 import sys
+import textwrap
 from importlib.util import find_spec
 from pathlib import Path
 
@@ -92,3 +93,8 @@ def print_table(table: pd.DataFrame, title: str) -> None:
     """Print a small table under a title."""
     print(f"\n{title}")
     print(table.to_string(index=False, float_format=lambda x: f"{x:.3g}", na_rep="-"))
+
+
+def say(text: str) -> None:
+    """Print a paragraph."""
+    print("\n" + textwrap.fill(text, 100))

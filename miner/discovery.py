@@ -17,7 +17,7 @@ from miner.nulls.margins import ROWS_A_BLOCK, Margins, cannot_pass, fit_margins,
 from miner.proposals import count_windows, propose
 from miner.units import Case
 
-TIE = 1e-4  # drawn log p-values are kept in single precision
+TIE = 0.01  # drawn log p-values are interpolated and rounded by less: within it, a tie
 
 
 @dataclass(frozen=True)

@@ -107,7 +107,7 @@ def power_at(rates: np.ndarray, precision: float, level: float) -> float:
     least = least_passing(rates, level)
     if least > rates.size:
         return 0.0
-    log_odds, _ = tails.solve_tilt(inside, min(total, inside.size - 1e-9))
+    log_odds, _ = tails.tilt_to(inside, min(total, inside.size - 1e-9), 0.0)
     return float(tails.upper_tail(tails.tilt(rates, log_odds), least))
 
 

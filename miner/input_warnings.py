@@ -11,7 +11,8 @@ from miner.nulls.margins import fit_margins
 from miner.units import Case
 
 JUMP = 2.5  # a type's monthly count, before against after
-MONTHS_EACH_SIDE = 3
+MONTHS_EACH_SIDE = 6
+MANY_MIDNIGHTS = 0.2
 FEW_EVENTS_DISCOVERY = 30
 FEW_EVENTS_HOLDOUT = 10
 SMALL_PEER_GROUP = 5
@@ -45,7 +46,7 @@ def _stamps(inputs: Inputs) -> Iterator[str]:
                 "session; those that came after the close look a session earlier than they were. "
                 "Give times if you can."
             )
-        elif midnight > 0.05 * n:
+        elif midnight > MANY_MIDNIGHTS * n:
             yield (
                 f"{name}: {midnight:,} of {n:,} stamps are midnight or bare dates and count in "
                 "that date's session, even if they came after the close."
@@ -69,7 +70,7 @@ def jumps(
 ) -> Iterator[str]:
     """Types whose monthly count steps up or down as if their definition had changed.
 
-    A step: over three whole months on either side of a month's start, every count on one side
+    A step: over six whole months on either side of a month's start, every count on one side
     exceeds every count on the other, and the means differ by a factor of 2.5 or more. The largest
     step of a type is told.
     """
@@ -159,6 +160,7 @@ def _peers(case: Case) -> Iterator[str]:
     left = 1.0 - float(margins.rates(cell_e, cell_t).mean()) if cell_e.size else 1.0
     if left < LITTLE_CHANCE:
         yield (
-            f"{where}: entity totals and peer dates alone predict its event windows with chance "
-            f"{1 - left:.0%} on average, which leaves little for any combination to explain."
+            f"{where}: knowing only how often each entity and each peer date has an event window "
+            f"already gives the actual windows a chance of {1 - left:.0%} on average; the null "
+            "leaves little open for any combination to explain."
         )

@@ -9,8 +9,6 @@ import pandas as pd
 
 from miner.triggers import Combo
 
-MANY_WINDOWS = 200_000
-
 
 def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo, int]:
     """Combinations seen in at least ``min_hits`` windows, with their number of windows.
@@ -25,9 +23,10 @@ def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo,
     n_windows = is_seen_vk.shape[0]
     if n_windows < min_hits:
         return {}
-    from mlxtend.frequent_patterns import fpgrowth, hmine
+    # of the library's miners by far the fastest on windows: 35,000 x 40 with 10,700 sets up to size
+    # three took it 0.6 s and fpgrowth 92 s
+    from mlxtend.frequent_patterns import hmine
 
-    mine = hmine if n_windows > MANY_WINDOWS else fpgrowth
     # rare types cannot be part of a frequent set and only slow the search
     kept = np.flatnonzero(is_seen_vk.sum(axis=0) >= min_hits)
     if kept.size == 0:
@@ -35,10 +34,10 @@ def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo,
     frame = pd.DataFrame(is_seen_vk[:, kept], columns=kept)
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")
-        found = mine(
+        found = hmine(
             frame, min_support=(min_hits - 0.5) / n_windows, max_len=max_size, use_colnames=True
         )
-    counts = np.rint(found["support"].to_numpy() * n_windows).astype(np.int64)
+    counts = np.rint(found["support"].to_numpy(dtype=np.float64) * n_windows).astype(np.int64)
     return {
         tuple(sorted(int(k) for k in itemset)): int(count)
         for itemset, count in zip(found["itemsets"], counts, strict=True)

@@ -1,4 +1,4 @@
-"""Settings every test shares: property tests draw the same examples each time and take their time."""
+"""What every test shares: property tests draw the same examples each time, without a clock."""
 
 from hypothesis import settings
 

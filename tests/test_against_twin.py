@@ -51,7 +51,7 @@ def name_of(row: dict[str, Any], order: int | None, rules: dict[int, dict[str, A
 def assert_same(result: Hunt, rows: list[dict[str, Any]]) -> None:
     """Counts, texts and verdicts equal; other numbers to nine digits."""
     rules = {row["rule_order"]: row for row in rows if row["rule_order"] is not None}
-    twin = pd.DataFrame(rows).astype({name: "Int64" for name in WHOLE})
+    twin = pd.DataFrame(rows).astype(dict.fromkeys(WHOLE, "Int64"))
     twin["sharpens"] = [name_of(row, row["sharpens_order"], rules) for row in rows]
     twin["explained_by"] = [name_of(row, row["explained_by_order"], rules) for row in rows]
     mine = result.candidates

@@ -9,15 +9,26 @@ from miner.kernels.compiling import kernel
 
 
 @kernel
+def has_event(busy_ew, e, t):
+    """Whether bit ``t`` of an entity's row is set."""
+    return (busy_ew[e, t >> 6] >> np.uint64(t & 63)) & ONE != 0
+
+
+@kernel
+def flip_event(busy_ew, e, t):
+    """Turn bit ``t`` of an entity's row, in place."""
+    busy_ew[e, t >> 6] ^= ONE << np.uint64(t & 63)
+
+
+@kernel
 def exchange(
-    session_v, entity_v, first_event_e, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep
+    session_v, entity_v, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep
 ):
     """Run sweeps of exchanges and keep the last ``n_keep`` states.
 
     Parameters
     ----------
     session_v, entity_v : int32 [events], the events, sorted by entity; ``session_v`` is not changed
-    first_event_e : int64 [entities + 1], offsets of each entity's events
     pool_v : int32 [events], the pool of each event; ``pool_start`` int64 [pools + 1] and
         ``pool_member`` int32 list each pool's events. A pool is one slot group, in pool order
     slot_et : int16 [entities, sessions], slot group, -1 out of reach
@@ -31,6 +42,25 @@ def exchange(
     """
     n_sweeps, n_events = random_nv.shape
     now_v = session_v.copy()
+    # an entity that is in the same group on every session in reach needs no look at its slots
+    n_entities, n_sessions = slot_et.shape
+    first_t = n_sessions
+    last_t = -1
+    for v in range(n_events):
+        first_t = min(first_t, session_v[v])
+        last_t = max(last_t, session_v[v])
+    busy_ew = np.zeros((n_entities, (n_sessions + 63) // 64), dtype=np.uint64)
+    for v in range(n_events):
+        flip_event(busy_ew, entity_v[v], session_v[v])
+    is_even_e = np.zeros(n_entities, dtype=np.bool_)
+    for v in range(n_events):
+        e = entity_v[v]
+        if v == 0 or entity_v[v - 1] != e:
+            is_even_e[e] = True
+            for t in range(first_t, last_t + 1):
+                if slot_et[e, t] != slot_et[e, session_v[v]]:
+                    is_even_e[e] = False
+                    break
     kept = np.empty((n_keep, n_events), dtype=np.int32)
     for n in range(n_sweeps):
         for i in range(n_events):
@@ -42,25 +72,38 @@ def exchange(
             s, u = now_v[i], now_v[j]
             if a == b or s == u:
                 continue
-            group = slot_et[a, s]
-            if slot_et[a, u] != group or slot_et[b, s] != group:
+            if not is_even_e[a] and slot_et[a, u] != slot_et[a, s]:
                 continue
-            is_free = True
-            for v in range(first_event_e[a], first_event_e[a + 1]):
-                if now_v[v] == u:
-                    is_free = False
-                    break
-            if is_free:
-                for v in range(first_event_e[b], first_event_e[b + 1]):
-                    if now_v[v] == s:
-                        is_free = False
-                        break
-            if is_free:
-                now_v[i] = u
-                now_v[j] = s
+            if not is_even_e[b] and slot_et[b, s] != slot_et[b, u]:
+                continue
+            if has_event(busy_ew, a, u) or has_event(busy_ew, b, s):
+                continue
+            flip_event(busy_ew, a, s)
+            flip_event(busy_ew, a, u)
+            flip_event(busy_ew, b, u)
+            flip_event(busy_ew, b, s)
+            now_v[i] = u
+            now_v[j] = s
         if n >= n_sweeps - n_keep:
             kept[n - (n_sweeps - n_keep)] = now_v
     return kept
+
+
+@kernel
+def add3(a, b, c):
+    """Sum and carry of three bits, 64 at a time."""
+    half = a ^ b
+    return half ^ c, (a & b) | (half & c)
+
+
+@kernel
+def carry_into(plane_p, p, word):
+    """Add a word to bit-sliced counters from plane ``p`` on, in place."""
+    while word:
+        plane = plane_p[p]
+        plane_p[p] = plane ^ word
+        word &= plane
+        p += 1
 
 
 @kernel
@@ -74,7 +117,7 @@ def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_
     ----------
     session_rv : int32 [draws <= 64, events], events sorted by entity (``first_event_e``)
     offset_c, entity, session : combination-major triggers, sorted by entity
-    n_planes : int, at least the bits of the largest trigger count
+    n_planes : int, at least the bits of the largest trigger count, and 3
 
     Returns int32 [draws, combinations].
     """
@@ -102,15 +145,29 @@ def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_
                         word_et[e - first, t] |= bit
         for c in range(n_combos):
             j = next_c[c]
-            stop = offset_c[c + 1]
-            while j < stop and entity[j] < last:
-                carry = word_et[entity[j] - first, session[j]]
-                p = 0
-                while carry:
-                    plane = plane_cp[c, p]
-                    plane_cp[c, p] = plane ^ carry
-                    carry &= plane
-                    p += 1
+            stop = j
+            while stop < offset_c[c + 1] and entity[stop] < last:
+                stop += 1
+            while stop - j >= 7:
+                # seven words to three by full adders, without a branch
+                a0, a1 = add3(
+                    word_et[entity[j] - first, session[j]],
+                    word_et[entity[j + 1] - first, session[j + 1]],
+                    word_et[entity[j + 2] - first, session[j + 2]],
+                )
+                b0, b1 = add3(
+                    word_et[entity[j + 3] - first, session[j + 3]],
+                    word_et[entity[j + 4] - first, session[j + 4]],
+                    word_et[entity[j + 5] - first, session[j + 5]],
+                )
+                c0, c1 = add3(a0, b0, word_et[entity[j + 6] - first, session[j + 6]])
+                d1, d2 = add3(a1, b1, c1)
+                carry_into(plane_cp[c], 0, c0)
+                carry_into(plane_cp[c], 1, d1)
+                carry_into(plane_cp[c], 2, d2)
+                j += 7
+            while j < stop:
+                carry_into(plane_cp[c], 0, word_et[entity[j] - first, session[j]])
                 j += 1
             next_c[c] = j
     hits_rc = np.zeros((n_draws, n_combos), dtype=np.int32)

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from miner.kernels.compiling import kernel
+from miner.kernels.compiling import kernel, summing_kernel
 
 
 @kernel
@@ -114,7 +114,7 @@ def settle_sure(spell_e, start_i, stop_i, group_i, windows_e, cells_e, windows_g
             return row_order, col_order
 
 
-@kernel
+@summing_kernel
 def row_sweep(
     first_i, last_i, spell_e, start_i, stop_i, group_i, u_e, v_gt, target_e, sum_gt, var_gt
 ):

@@ -6,12 +6,12 @@ import math
 
 import numpy as np
 
-from miner.kernels.compiling import kernel
+from miner.kernels.compiling import kernel, summing_kernel
 
 TINY = 1e-300
 EXACT_WORK = 100_000  # trials x states up to which one tail is always summed exactly
 EXACT_STATES = 60  # and states up to which it is whatever the number of trials
-TABLE_WORK = 10_000_000  # trials x states up to which a whole table is
+TABLE_WORK = 300_000  # trials x states up to which a whole table is
 
 
 @kernel
@@ -65,7 +65,7 @@ def exact_tail(q, least):
     return min(1.0, few_states(q, least)[1])
 
 
-@kernel
+@summing_kernel
 def cumulants(q, s):
     """K(s), K'(s), K''(s), K'''(s), K''''(s) of the sum of Bernoulli(q[i]), tilted by s."""
     grow = math.exp(s)
@@ -82,28 +82,47 @@ def cumulants(q, s):
     return k0, k1, k2, k3, k4
 
 
-@kernel
-def saddlepoint_tail(q, least):
-    """P(X >= least) by the lattice saddlepoint series to second order.
+@summing_kernel
+def tilt_to(q, total, s):
+    """The tilt at which the mean is ``total``, by Newton steps from ``s``, kept in a bracket.
 
-    Lugannani & Rice (1980), the lattice form with its second term as in Daniels (1987),
-    "Tail probability approximations", section 6. ``least`` lies strictly between the sure
-    successes and the possible ones.
+    ``total`` lies strictly between the sure successes and the possible ones. Returns the tilt and
+    the variance there.
     """
-    s = 0.0
-    low, high = -50.0, 50.0
+    low, high = -60.0, 60.0
+    spread = 0.0
     for _ in range(200):
-        _, k1, k2, _, _ = cumulants(q, s)
-        miss = k1 - least
-        if abs(miss) < 1e-10 * max(1.0, least):
+        grow = math.exp(s)
+        mean = 0.0
+        spread = 0.0
+        for i in range(q.size):
+            p = q[i] * grow / (1.0 - q[i] + q[i] * grow)
+            mean += p
+            spread += p * (1.0 - p)
+        miss = mean - total
+        step = miss / spread
+        # sums of n terms are no better than this; to go on would be to chase rounding
+        if abs(miss) < 1e-13 * q.size or abs(step) < 1e-15:
             break
         if miss > 0:
             high = s
         else:
             low = s
-        s -= miss / k2
+        s -= step
         if not low < s < high:
             s = 0.5 * (low + high)
+    return s, spread
+
+
+@kernel
+def saddlepoint_tail(q, least, start):
+    """P(X >= least) by the lattice saddlepoint series to second order, and the tilt it used.
+
+    Lugannani & Rice (1980), the lattice form with its second term as in Daniels (1987),
+    "Tail probability approximations", section 6. ``least`` lies strictly between the sure
+    successes and the possible ones; ``start`` is where the search for the tilt begins.
+    """
+    s, _ = tilt_to(q, float(least), start)
     k0, _, k2, k3, k4 = cumulants(q, s)
     if abs(s) < 1e-3:
         # at the mean: Edgeworth to the same order, with the half-unit lattice correction
@@ -111,7 +130,7 @@ def saddlepoint_tail(q, least):
         z = (least - 0.5 - mean) / math.sqrt(var)
         skew = third / var**1.5
         density = math.exp(-0.5 * z * z) / math.sqrt(2.0 * math.pi)
-        return 0.5 * math.erfc(z / math.sqrt(2.0)) + density * skew * (z * z - 1.0) / 6.0
+        return 0.5 * math.erfc(z / math.sqrt(2.0)) + density * skew * (z * z - 1.0) / 6.0, s
     depth = s * least - k0
     w = math.sqrt(2.0 * max(depth, 0.0)) * (1.0 if s > 0 else -1.0)
     u = (1.0 - math.exp(-s)) * math.sqrt(k2)
@@ -128,54 +147,69 @@ def saddlepoint_tail(q, least):
         # beyond the range of erfc: Mills' ratio, the two large terms cancelled by hand
         x = w * w
         bracket = -1.0 / w**3 * (1.0 - 3.0 / x + 15.0 / x**2) + 1.0 / u + correction
-        return math.exp(log_density) * bracket
+        return math.exp(log_density) * bracket, s
     tail = normal_tail + math.exp(log_density) * (1.0 / u - 1.0 / w + correction)
-    return min(1.0, max(0.0, tail))
+    return min(1.0, max(0.0, tail)), s
 
 
 @kernel
-def upper_tail(q, least):
-    """P(X >= least): summed exactly where that is affordable, else by the saddlepoint."""
+def upper_tail_from(q, least, start):
+    """``upper_tail``, and a tilt from which to begin for a neighbour of ``least``."""
     if q.size * least <= EXACT_WORK or least <= EXACT_STATES:
-        return exact_tail(q, least)
+        return exact_tail(q, least), start
     n_sure = 0
     n_possible = 0
     for i in range(q.size):
         n_sure += q[i] >= 1.0
         n_possible += q[i] > 0.0
     if least <= n_sure:
-        return 1.0
+        return 1.0, start
     if least > n_possible:
-        return 0.0
+        return 0.0, start
     if least == n_possible:
-        return exact_tail(q[q > 0.0], least)
-    return saddlepoint_tail(q, least)
+        return exact_tail(q[q > 0.0], least), start
+    return saddlepoint_tail(q, least, start)
+
+
+@kernel
+def upper_tail(q, least):
+    """P(X >= least): summed exactly where that is affordable, else by the saddlepoint."""
+    return upper_tail_from(q, least, 0.0)[0]
 
 
 @kernel
 def tail_table(q, first, last):
     """P(X >= x) for x = first .. last: float64 [last - first + 1].
 
-    Exact where affordable. Otherwise saddlepoint tails on a grid, joined log-linearly: monotone,
-    which is what ranking draws needs, and not meant to be read as a p-value.
+    Exact where affordable. Otherwise tails at up to thirteen knots, their logarithms joined by
+    parabolas (a log tail is close to one): what ranking draws needs, not a p-value to report.
     """
     table = np.empty(last - first + 1)
-    if q.size * (last + 1) <= TABLE_WORK:
+    if q.size * (last + 1) <= TABLE_WORK or last - first < 3:
         p_x, tail = few_states(q, last + 1)
         for x in range(last, first - 1, -1):
             tail += p_x[x]
             table[x - first] = min(1.0, tail)
         return table
-    step = max(1, (last - first) // 32)
-    x = first
-    table[0] = upper_tail(q, first)
-    while x < last:
-        nxt = min(last, x + step)
-        table[nxt - first] = upper_tail(q, nxt)
-        low, high = math.log(max(table[x - first], TINY)), math.log(max(table[nxt - first], TINY))
-        for y in range(x + 1, nxt):
-            table[y - first] = math.exp(low + (high - low) * (y - x) / (nxt - x))
-        x = nxt
+    n_knots = min(last - first, 12) + 1
+    knot = np.empty(n_knots)
+    log_p = np.empty(n_knots)
+    s = 0.0
+    for i in range(n_knots):
+        x = first + (last - first) * i // (n_knots - 1)
+        p, s = upper_tail_from(q, x, s)
+        knot[i], log_p[i] = x, math.log(max(p, TINY))
+    i = 0
+    for x in range(first, last + 1):
+        while i < n_knots - 3 and x > knot[i + 1]:
+            i += 1
+        a, b, c = knot[i], knot[i + 1], knot[i + 2]
+        value = (
+            log_p[i] * (x - b) * (x - c) / ((a - b) * (a - c))
+            + log_p[i + 1] * (x - a) * (x - c) / ((b - a) * (b - c))
+            + log_p[i + 2] * (x - a) * (x - b) / ((c - a) * (c - b))
+        )
+        table[x - first] = math.exp(min(0.0, value))
     return table
 
 
@@ -209,36 +243,6 @@ def tilt(q, log_odds):
 
 
 @kernel
-def solve_tilt(q, total):
-    """The log odds ratio that makes the rates add up to ``total``, and the variance there.
-
-    ``total`` lies strictly between 0 and the number of rates, all of which lie inside (0, 1).
-    Returns ``log_odds, sum of q (1 - q)`` at the solution.
-    """
-    s = 0.0
-    low, high = -60.0, 60.0
-    for _ in range(200):
-        total_now = 0.0
-        spread = 0.0
-        grow = math.exp(s)
-        for i in range(q.size):
-            p = q[i] * grow / (1.0 - q[i] + q[i] * grow)
-            total_now += p
-            spread += p * (1.0 - p)
-        miss = total_now - total
-        if abs(miss) < 1e-12 * max(1.0, total):
-            break
-        if miss > 0:
-            high = s
-        else:
-            low = s
-        s -= miss / spread
-        if not low < s < high:
-            s = 0.5 * (low + high)
-    return s, spread
-
-
-@kernel
 def sharper_p_value(q_rest, hits_rest, q_own, hits_own, node, weight):
     """Chance of at least ``hits_own`` hits, were the odds ratio that of the rest.
 
@@ -256,7 +260,7 @@ def sharper_p_value(q_rest, hits_rest, q_own, hits_own, node, weight):
     n_sure = np.sum(q_rest >= 1.0)
     total = float(hits_rest - n_sure)
     total = min(max(total, 0.5), n - 0.5)
-    log_odds, spread = solve_tilt(inside, total)
+    log_odds, spread = tilt_to(inside, total, 0.0)
     scale = math.sqrt(2.0 / spread)
     p = 0.0
     for i in range(node.size):

@@ -58,7 +58,6 @@ class Exchanger:
         kept = kernels.exchange(
             session,
             entity,
-            self.first_event_e,
             *self._pools,
             self.case.unit.slot_et,
             random_nv,
@@ -79,7 +78,7 @@ class Exchanger:
         """Hits of every combination of the case in each draw: int32 [draws, combinations]."""
         unit = self.case.unit
         table = unit.triggers
-        n_planes = max(1, int(table.count_c.max(initial=1)).bit_length())
+        n_planes = max(3, int(table.count_c.max(initial=1)).bit_length())
 
         def count(block: tuple[int, int]) -> np.ndarray:
             drawn = self.sessions(block[0] // DRAWS_A_BLOCK)[: block[1] - block[0]]

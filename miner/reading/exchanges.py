@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import datetime as dt
 import difflib
+import warnings
 from typing import Any
 
 import numpy as np
@@ -34,7 +35,7 @@ def open_exchange(code: str) -> Any:
         raise CalendarError(explain("[sessions]", "calendar", rule, f'"{code}"', advice))
     for year in _TRIAL_YEARS:
         try:
-            return exchange_calendars.get_calendar(code, start=f"{year}-01-01", end=f"{year}-12-31")
+            return _calendar(code, f"{year}-01-01", f"{year}-12-31")
         except Exception as error:  # the library raises errors of many kinds
             failure = error
     raise _cannot_compute(code, failure) from failure
@@ -48,8 +49,6 @@ def exchange_sessions(
     They run from `margin_days` before `first` to as many after `last`, less where the library
     knows no further. Raises `CalendarError` where `first` or `last` is outside what it knows.
     """
-    import exchange_calendars
-
     limits = type(open_exchange(code))
     low, high = (
         None if bound is None else bound.date()
@@ -63,11 +62,20 @@ def exchange_sessions(
     start = first - margin if low is None else max(first - margin, low)
     end = last + margin if high is None else min(last + margin, high)
     try:
-        closes = exchange_calendars.get_calendar(code, start=start, end=end).closes
+        closes = _calendar(code, start, end).closes
     except Exception as error:  # the library raises errors of many kinds
         raise _cannot_compute(code, error) from error
     dates = closes.index.to_numpy().astype("datetime64[D]")
     return dates, closes.dt.as_unit("us").astype("int64").to_numpy()
+
+
+def _calendar(code: str, start: str | dt.date, end: str | dt.date) -> Any:
+    """The library's calendar; its use of what newer pandas deprecates is not the user's concern."""
+    import exchange_calendars
+
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        return exchange_calendars.get_calendar(code, start=start, end=end)
 
 
 def _cannot_compute(code: str, error: Exception) -> CalendarError:

@@ -1,7 +1,9 @@
-"""Level: in worlds where no combination says anything, how often each null says p < .05."""
+"""Level: in worlds where no combination says anything, how often each null says p <= .05."""
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterator
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -13,7 +15,8 @@ from miner.nulls.plain_shuffle import PlainShuffleNull
 from miner.units import Case
 from tests.calibration import remedies
 from tests.calibration.in_memory import case_of
-from tests.calibration.table import NamedWorld
+from tests.calibration.table import WORLDS, NamedWorld
+from tests.calibration.whole_runs import RunExchanger
 
 LEVELS = (0.05, 0.01, 0.001)
 ROOMY = 5.0  # expected hits from which discreteness no longer hides a level that is broken
@@ -23,59 +26,68 @@ WARNING_DRAWS = 99
 
 
 def _below(p: np.ndarray, expected: np.ndarray) -> dict[str, list[float]]:
-    """Shares below each level, of all combinations and of the roomy ones."""
+    """Shares at or below each level, of all combinations and of the roomy ones."""
     roomy = p[expected >= ROOMY]
     return {
-        "all": [float((p < level).mean()) for level in LEVELS],
-        "roomy": [float((roomy < level).mean()) for level in LEVELS] if roomy.size else [],
+        "all": [float((p <= level).mean()) for level in LEVELS],
+        "roomy": [float((roomy <= level).mean()) for level in LEVELS] if roomy.size else [],
     }
 
 
 def measure(
-    world: NamedWorld, seed: int, *, with_shuffle: bool = False, with_warnings: bool = False
+    world: NamedWorld, seed: int, *, with_draws: bool = False, with_slow: bool = False
 ) -> dict[str, Any] | None:
-    """Shares of combinations below each level by every null and remedy; None without a family."""
+    """Shares of combinations at or below each level, by null and remedy; None without a family.
+
+    ``with_draws`` adds what needs drawn worlds; ``with_slow`` the plain shuffle and the warnings.
+    """
     case = case_of(world.make(seed))
     rows = np.arange(len(case.unit.triggers.combos))
     if rows.size == 0:
         return None
     margins, rates, p_margins = remedies.fitted(case)
     expected = remedies.expected_hits(case, rates)
-    exchanger = Exchanger(case, seed, "judge")
-    hits_rc = exchanger.hits(DRAWS)
-    p_drawn = (1 + (hits_rc >= case.hits_c).sum(axis=0)) / (1 + DRAWS)
-    extra = remedies.inflation(case, hits_rc)
-    some = expected >= ROOMY
-    closed_sd = _closed_sd(case, rates)
+    p_own = OwnTimingNull().judge(case, rows).p_value
     p = {
         "margins": p_margins,
-        "exchanges": p_drawn,
-        "own timing": OwnTimingNull().judge(case, rows).p_value,
-        "max of both": np.maximum(p_margins, OwnTimingNull().judge(case, rows).p_value),
+        "own timing": p_own,
+        "larger of both": np.maximum(p_margins, p_own),
         "rows by 100": remedies.renewed_rows(case, 100),
         "recent 10": remedies.split_by_recent(case, 10),
         "recent 30": remedies.split_by_recent(case, 30),
         "clustered": remedies.widened_by_clusters(case, rates, p_margins),
-        "deflated": remedies.deflated(p_margins, extra),
     }
-    if with_shuffle:
-        p["plain shuffle"] = PlainShuffleNull(SHUFFLES, seed).judge(case, rows).p_value
     row: dict[str, Any] = {
         "family": int(rows.size),
         "base": float(case.is_window_et[case.unit.is_open_et].mean()),
-        "below": {name: _below(values, expected) for name, values in p.items()},
-        "shift": extra.shift,
-        "scale": extra.scale,
-        "p_inflated": extra.p,
     }
-    if some.any():
-        row["mean_ratio"] = float((hits_rc.mean(axis=0)[some] / expected[some]).mean())
-        row["sd_ratio"] = float((closed_sd[some] / hits_rc.std(axis=0)[some]).mean())
-    if with_warnings:
+    if with_draws:
+        hits_rc = Exchanger(case, seed, "judge").hits(DRAWS)
+        runs_rc = RunExchanger(case, seed).hits(DRAWS)
+        extra, by_runs = (remedies.inflation(case, drawn) for drawn in (hits_rc, runs_rc))
+        p["exchanges"] = _drawn_p(case, hits_rc)
+        p["whole runs"] = _drawn_p(case, runs_rc)
+        p["deflated"] = remedies.deflated(p_margins, extra)
+        row |= {"shift": extra.shift, "scale": extra.scale, "p_inflated": extra.p}
+        row["p_inflated_runs"] = by_runs.p
+        some = expected >= ROOMY
+        if some.any():
+            closed_sd = _closed_sd(case, rates)[some]
+            for name, drawn in (("exchanges", hits_rc), ("runs", runs_rc)):
+                sd = np.maximum(drawn.std(axis=0)[some], 1e-9)
+                row[f"mean_{name}"] = float((drawn.mean(axis=0)[some] / expected[some]).mean())
+                row[f"sd_{name}"] = float(np.median(closed_sd / sd))
+    if with_slow:
+        p["plain shuffle"] = PlainShuffleNull(SHUFFLES, seed).judge(case, rows).p_value
         row["p_together"], row["p_spells"] = remedies.left_over(
             case, margins, drawn_windows(case, seed, WARNING_DRAWS)
         )
+    row["below"] = {name: _below(values, expected) for name, values in p.items()}
     return row
+
+
+def _drawn_p(case: Case, hits_rc: np.ndarray) -> np.ndarray:
+    return (1 + (hits_rc >= case.hits_c).sum(axis=0)) / (1 + len(hits_rc))
 
 
 def _closed_sd(case: Case, rates: np.ndarray) -> np.ndarray:
@@ -91,3 +103,27 @@ def drawn_windows(case: Case, seed: int, n_draws: int) -> list[np.ndarray]:
         mark_windows(entity, session, n_entities, n_sessions, case.unit.horizon)
         for entity, session in Exchanger(case, seed, "warning").worlds(n_draws)
     ]
+
+
+Tasks = Iterator[tuple[dict[str, Any], Callable[[], Any]]]
+
+
+def tasks(n_seeds: int, n_drawn: int, n_slow: int) -> Tasks:
+    """Runs, seeds outermost so that an interruption leaves every world equally far.
+
+    The first ``n_drawn`` seeds get the drawn worlds and the first ``n_slow`` the slow nulls; the
+    world of 40 types, a hundred times the work, every tenth seed.
+    """
+    for i in range(n_seeds):
+        for world in WORLDS:
+            if world.drivers.get("n_types", 0) < 40 or i % 10 == 0:
+                yield (
+                    {"part": "level", "world": world.name, "seed": 10_000 + i},
+                    partial(
+                        measure,
+                        world,
+                        10_000 + i,
+                        with_draws=i < n_drawn,
+                        with_slow=i < n_slow and world.drivers.get("n_types", 0) < 40,
+                    ),
+                )

@@ -111,7 +111,7 @@ class Inflation:
 def inflation(case: Case, hits_rc: np.ndarray) -> Inflation:
     """Inflation against drawn worlds (``hits_rc`` [draws, combinations]); draws' mean and sd."""
     mean, spread = hits_rc.mean(axis=0), hits_rc.std(axis=0)
-    some = mean >= 1.0
+    some = (mean >= 1.0) & (spread > 0)
     if not some.any():
         return Inflation(0.0, 1.0, 1.0)
     z_rc = (hits_rc[:, some] - mean[some]) / spread[some]
