@@ -22,13 +22,13 @@ def named(found: dict[tuple[int, ...], int], items: list[str]) -> dict[str, int]
 
 
 # Han, Kamber & Pei, 3rd edition, table 6.1.
-HAN_KAMBER_PEI = "125 24 23 124 13 23 13 1235 123".split()
+HAN_KAMBER_PEI = ["125", "24", "23", "124", "13", "23", "13", "1235", "123"]
 # Agrawal & Srikant 1994, figure 3.
-AGRAWAL_SRIKANT = "134 235 1235 25".split()
+AGRAWAL_SRIKANT = ["134", "235", "1235", "25"]
 # Zaki & Meira 2014, figure 8.1.
-ZAKI_MEIRA = "ABDE BCE ABDE ABCE ABCDE BCD".split()
+ZAKI_MEIRA = ["ABDE", "BCE", "ABDE", "ABCE", "ABCDE", "BCD"]
 # Han, Pei & Yin 2000, table 1.
-HAN_PEI_YIN = "facdgimp abcflmo bfhjo bcksp afcelpmn".split()
+HAN_PEI_YIN = ["facdgimp", "abcflmo", "bfhjo", "bcksp", "afcelpmn"]
 # Tan, Steinbach & Kumar, chapter 6: bread, milk and diapers are together twice, not thrice.
 BASKETS = ["bread milk", "bread diapers beer eggs", "milk diapers beer cola",
            "bread milk diapers beer", "bread milk diapers cola"]  # fmt: skip

@@ -17,7 +17,7 @@ def main() -> None:
     parser = argparse.ArgumentParser(prog="python -m tests.calibration", description=__doc__)
     parser.add_argument("--form", choices=FORMS, default="short")
     parser.add_argument("--part", choices=list(PARTS), nargs="*", help="default: every part")
-    parser.add_argument("--lines", type=Path, default=Path("reports/calibration_lines"))
+    parser.add_argument("--lines", type=Path, default=Path("build/calibration"))
     parser.add_argument("--report", action="store_true", help="write reports/calibration.md too")
     parser.add_argument("--minutes", type=float, default=float("inf"), help="per part, at most")
     asked = parser.parse_args()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from dataclasses import dataclass
 from functools import partial
 from typing import Any
 
@@ -34,17 +35,21 @@ def _below(p: np.ndarray, expected: np.ndarray) -> dict[str, list[float]]:
     }
 
 
-def measure(
-    world: NamedWorld, seed: int, *, with_draws: bool = False, with_slow: bool = False
-) -> dict[str, Any] | None:
-    """Shares of combinations at or below each level, by null and remedy; None without a family.
+@dataclass(frozen=True)
+class Judged:
+    """A case by every null and remedy: p-values by name, and what else was measured of it."""
+
+    expected: np.ndarray
+    p: dict[str, np.ndarray]
+    facts: dict[str, Any]
+
+
+def judge(case: Case, seed: int, *, with_draws: bool = False, with_slow: bool = False) -> Judged:
+    """Judge every combination of a case.
 
     ``with_draws`` adds what needs drawn worlds; ``with_slow`` the plain shuffle and the warnings.
     """
-    case = case_of(world.make(seed))
     rows = np.arange(len(case.unit.triggers.combos))
-    if rows.size == 0:
-        return None
     margins, rates, p_margins = remedies.fitted(case)
     expected = remedies.expected_hits(case, rates)
     p_own = OwnTimingNull().judge(case, rows).p_value
@@ -57,10 +62,7 @@ def measure(
         "recent 30": remedies.split_by_recent(case, 30),
         "clustered": remedies.widened_by_clusters(case, rates, p_margins),
     }
-    row: dict[str, Any] = {
-        "family": int(rows.size),
-        "base": float(case.is_window_et[case.unit.is_open_et].mean()),
-    }
+    facts: dict[str, Any] = {}
     if with_draws:
         hits_rc = Exchanger(case, seed, "judge").hits(DRAWS)
         runs_rc = RunExchanger(case, seed).hits(DRAWS)
@@ -68,22 +70,37 @@ def measure(
         p["exchanges"] = _drawn_p(case, hits_rc)
         p["whole runs"] = _drawn_p(case, runs_rc)
         p["deflated"] = remedies.deflated(p_margins, extra)
-        row |= {"shift": extra.shift, "scale": extra.scale, "p_inflated": extra.p}
-        row["p_inflated_runs"] = by_runs.p
+        facts |= {"shift": extra.shift, "scale": extra.scale, "p_inflated": extra.p}
+        facts["p_inflated_runs"] = by_runs.p
         some = expected >= ROOMY
         if some.any():
             closed_sd = _closed_sd(case, rates)[some]
             for name, drawn in (("exchanges", hits_rc), ("runs", runs_rc)):
                 sd = np.maximum(drawn.std(axis=0)[some], 1e-9)
-                row[f"mean_{name}"] = float((drawn.mean(axis=0)[some] / expected[some]).mean())
-                row[f"sd_{name}"] = float(np.median(closed_sd / sd))
+                facts[f"mean_{name}"] = float((drawn.mean(axis=0)[some] / expected[some]).mean())
+                facts[f"sd_{name}"] = float(np.median(closed_sd / sd))
     if with_slow:
         p["plain shuffle"] = PlainShuffleNull(SHUFFLES, seed).judge(case, rows).p_value
-        row["p_together"], row["p_spells"] = remedies.left_over(
+        facts["p_together"], facts["p_spells"] = remedies.left_over(
             case, margins, drawn_windows(case, seed, WARNING_DRAWS)
         )
-    row["below"] = {name: _below(values, expected) for name, values in p.items()}
-    return row
+    return Judged(expected, p, facts)
+
+
+def measure(
+    world: NamedWorld, seed: int, *, with_draws: bool = False, with_slow: bool = False
+) -> dict[str, Any] | None:
+    """Shares of combinations at or below each level, by null and remedy; None without a family."""
+    case = case_of(world.make(seed))
+    n_combos = len(case.unit.triggers.combos)
+    if n_combos == 0:
+        return None
+    judged = judge(case, seed, with_draws=with_draws, with_slow=with_slow)
+    return {
+        "family": n_combos,
+        "base": float(case.is_window_et[case.unit.is_open_et].mean()),
+        "below": {name: _below(p, judged.expected) for name, p in judged.p.items()},
+    } | judged.facts
 
 
 def _drawn_p(case: Case, hits_rc: np.ndarray) -> np.ndarray:
