@@ -84,8 +84,9 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
         f"{counts['passed'].get(adjust, 0):,} beat the margins null at {percent(fdr)} ({adjust}"
         + (f"; {', '.join(others)})" if others else ")"),
     )
-    yield entry("Rules", f"{counts['rules']} explain all of them")
-    yield entry("Confirmed", f"{counts['confirmed']} held on the holdout")
+    if counts["rules"]:
+        yield entry("Rules", f"{counts['rules']} account for all that passed")
+        yield entry("Confirmed", f"{counts['confirmed']} of the {counts['rules']} held on the holdout")
     placebo = record["placebo"]
     if placebo["worlds"]:
         yield entry(

@@ -8,6 +8,20 @@ from miner.kernels.bits import ONE
 from miner.kernels.compiling import kernel
 
 
+LANES = 4  # words of draws side by side: one vector register
+CELLS_A_BLOCK = 100_000  # cells whose words are kept at hand
+
+
+@kernel
+def carry_into(plane_pl, p, w, word):
+    """Add a word to lane ``w`` of bit-sliced counters from plane ``p`` on, in place."""
+    while word:
+        plane = plane_pl[p, w]
+        plane_pl[p, w] = plane ^ word
+        word &= plane
+        p += 1
+
+
 @kernel
 def has_event(busy_ew, e, t):
     """Whether bit ``t`` of an entity's row is set."""
@@ -90,91 +104,104 @@ def exchange(
 
 
 @kernel
-def add3(a, b, c):
-    """Sum and carry of three bits, 64 at a time."""
-    half = a ^ b
-    return half ^ c, (a & b) | (half & c)
+def count_hits(
+    session_rv, first_event_e, offset_c, entity, session, horizon, n_sessions, n_planes
+):
+    """Hits of every combination in up to 256 draws at once.
 
-
-@kernel
-def carry_into(plane_p, p, word):
-    """Add a word to bit-sliced counters from plane ``p`` on, in place."""
-    while word:
-        plane = plane_p[p]
-        plane_p[p] = plane ^ word
-        word &= plane
-        p += 1
-
-
-@kernel
-def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_sessions, n_planes):
-    """Hits of every combination in up to 64 draws at once.
-
-    One word a cell holds, bit by bit, in which draws the cell is in an event window; adding words
-    to bit-sliced counters (plane p holds bit p of 64 counts) adds 64 trials in a few operations.
+    Four words a cell hold, bit by bit, in which draws the cell is in an event window. Adding
+    words to bit-sliced counters (plane p holds bit p of every count) adds 256 trials in a few
+    operations; seven cells at a time go through full adders without a branch (the carry-save
+    adder tree of Harley and Seal, as in Warren, "Hacker's Delight", sec. 5-1).
 
     Parameters
     ----------
-    session_rv : int32 [draws <= 64, events], events sorted by entity (``first_event_e``)
+    session_rv : int32 [draws <= 256, events], events sorted by entity (``first_event_e``)
     offset_c, entity, session : combination-major triggers, sorted by entity
-    n_planes : int, at least the bits of the largest trigger count, and 3
+    n_planes : int, at least the bits of the largest trigger count, and 4
 
-    Returns int32 [draws, combinations].
+    Returns int32 [combinations, draws].
     """
     n_draws = session_rv.shape[0]
     n_combos = offset_c.size - 1
     n_entities = first_event_e.size - 1
-    plane_cp = np.zeros((n_combos, n_planes), dtype=np.uint64)
+    plane_cpl = np.zeros((n_combos, n_planes, LANES), dtype=np.uint64)
     next_c = offset_c[:-1].copy()
-    n_block = max(1, min(n_entities, 40_000 // n_sessions))  # windows of a block stay in cache
-    word_et = np.zeros((n_block, n_sessions), dtype=np.uint64)
+    n_block = max(1, min(n_entities, CELLS_A_BLOCK // n_sessions))
+    word_il = np.zeros((n_block * n_sessions, LANES), dtype=np.uint64)
+    word_k = np.zeros(LANES, dtype=np.uint64)
     for first in range(0, n_entities, n_block):
         last = min(n_entities, first + n_block)
-        if first_event_e[last] == first_event_e[first]:
-            for c in range(n_combos):
-                while next_c[c] < offset_c[c + 1] and entity[next_c[c]] < last:
-                    next_c[c] += 1
-            continue
-        word_et[:] = np.uint64(0)
-        for r in range(n_draws):
-            bit = ONE << np.uint64(r)
+        has_events = first_event_e[last] > first_event_e[first]
+        if has_events:
+            word_il[:] = np.uint64(0)
             for e in range(first, last):
-                for v in range(first_event_e[e], first_event_e[e + 1]):
-                    s = session_rv[r, v]
-                    for t in range(max(0, s - horizon), s):
-                        word_et[e - first, t] |= bit
+                base = (e - first) * n_sessions
+                for r in range(n_draws):
+                    bit = ONE << np.uint64(r & 63)
+                    for v in range(first_event_e[e], first_event_e[e + 1]):
+                        s = session_rv[r, v]
+                        for t in range(max(0, s - horizon), s):
+                            word_il[base + t, r >> 6] |= bit
         for c in range(n_combos):
             j = next_c[c]
             stop = j
             while stop < offset_c[c + 1] and entity[stop] < last:
                 stop += 1
+            next_c[c] = stop
+            if not has_events:
+                continue
             while stop - j >= 7:
-                # seven words to three by full adders, without a branch
-                a0, a1 = add3(
-                    word_et[entity[j] - first, session[j]],
-                    word_et[entity[j + 1] - first, session[j + 1]],
-                    word_et[entity[j + 2] - first, session[j + 2]],
-                )
-                b0, b1 = add3(
-                    word_et[entity[j + 3] - first, session[j + 3]],
-                    word_et[entity[j + 4] - first, session[j + 4]],
-                    word_et[entity[j + 5] - first, session[j + 5]],
-                )
-                c0, c1 = add3(a0, b0, word_et[entity[j + 6] - first, session[j + 6]])
-                d1, d2 = add3(a1, b1, c1)
-                carry_into(plane_cp[c], 0, c0)
-                carry_into(plane_cp[c], 1, d1)
-                carry_into(plane_cp[c], 2, d2)
+                i0 = (entity[j] - first) * n_sessions + session[j]
+                i1 = (entity[j + 1] - first) * n_sessions + session[j + 1]
+                i2 = (entity[j + 2] - first) * n_sessions + session[j + 2]
+                i3 = (entity[j + 3] - first) * n_sessions + session[j + 3]
+                i4 = (entity[j + 4] - first) * n_sessions + session[j + 4]
+                i5 = (entity[j + 5] - first) * n_sessions + session[j + 5]
+                i6 = (entity[j + 6] - first) * n_sessions + session[j + 6]
+                left_over = np.uint64(0)
+                for w in range(LANES):
+                    a = word_il[i0, w] ^ word_il[i1, w]
+                    a0 = a ^ word_il[i2, w]
+                    a1 = (word_il[i0, w] & word_il[i1, w]) | (a & word_il[i2, w])
+                    b = word_il[i3, w] ^ word_il[i4, w]
+                    b0 = b ^ word_il[i5, w]
+                    b1 = (word_il[i3, w] & word_il[i4, w]) | (b & word_il[i5, w])
+                    d = a0 ^ b0
+                    d0 = d ^ word_il[i6, w]
+                    d1 = (a0 & b0) | (d & word_il[i6, w])
+                    f = a1 ^ b1
+                    f1 = f ^ d1
+                    f2 = (a1 & b1) | (f & d1)
+                    # d0 + 2 f1 + 4 f2 into planes 0 to 3
+                    p0, p1 = plane_cpl[c, 0, w], plane_cpl[c, 1, w]
+                    p2, p3 = plane_cpl[c, 2, w], plane_cpl[c, 3, w]
+                    k1 = p0 & d0
+                    g = p1 ^ f1
+                    k2 = (p1 & f1) | (g & k1)
+                    h = p2 ^ f2
+                    k3 = (p2 & f2) | (h & k2)
+                    plane_cpl[c, 0, w] = p0 ^ d0
+                    plane_cpl[c, 1, w] = g ^ k1
+                    plane_cpl[c, 2, w] = h ^ k2
+                    plane_cpl[c, 3, w] = p3 ^ k3
+                    word_k[w] = p3 & k3
+                    left_over |= word_k[w]
+                if left_over:
+                    for w in range(LANES):
+                        carry_into(plane_cpl[c], 4, w, word_k[w])
                 j += 7
             while j < stop:
-                carry_into(plane_cp[c], 0, word_et[entity[j] - first, session[j]])
+                i0 = (entity[j] - first) * n_sessions + session[j]
+                for w in range(LANES):
+                    carry_into(plane_cpl[c], 0, w, word_il[i0, w])
                 j += 1
-            next_c[c] = j
-    hits_rc = np.zeros((n_draws, n_combos), dtype=np.int32)
+    hits_cr = np.zeros((n_combos, LANES * 64), dtype=np.int32)
     for c in range(n_combos):
         for p in range(n_planes):
-            word = plane_cp[c, p]
-            if word:
-                for r in range(n_draws):
-                    hits_rc[r, c] += np.int32((word >> np.uint64(r)) & ONE) << p
-    return hits_rc
+            for w in range(LANES):
+                word = plane_cpl[c, p, w]
+                if word:
+                    for b in range(64):
+                        hits_cr[c, 64 * w + b] += np.int32((word >> np.uint64(b)) & ONE) << p
+    return hits_cr[:, :n_draws]

@@ -15,7 +15,7 @@ from miner.panel import Events
 from miner.seeds import stream
 from miner.units import Case
 
-DRAWS_A_BLOCK = 64
+DRAWS_A_BLOCK = 256
 BURN_IN = 10
 
 
@@ -24,7 +24,7 @@ class Exchanger:
     """Worlds of a case in which every entity keeps its number of events and every peer group its
     number on each session.
 
-    Swap randomisation (Gionis, Mannila, Mielikainen & Tsaparas 2007). Each block of 64 draws is a
+    Swap randomisation (Gionis, Mannila, Mielikainen & Tsaparas 2007). Each block of 256 draws is a
     chain of its own, seeded by its number, that starts from the observed world, is run ``BURN_IN``
     sweeps and then kept once a sweep; a sweep lets every event propose one exchange.
     """
@@ -78,7 +78,7 @@ class Exchanger:
         """Hits of every combination of the case in each draw: int32 [draws, combinations]."""
         unit = self.case.unit
         table = unit.triggers
-        n_planes = max(3, int(table.count_c.max(initial=1)).bit_length())
+        n_planes = max(4, int(table.count_c.max(initial=1)).bit_length())
 
         def count(block: tuple[int, int]) -> np.ndarray:
             drawn = self.sessions(block[0] // DRAWS_A_BLOCK)[: block[1] - block[0]]
@@ -94,8 +94,8 @@ class Exchanger:
             )
 
         parts = workers.in_order(count, workers.blocks(n_draws, DRAWS_A_BLOCK), n_workers)
-        empty = np.empty((0, len(table.combos)), dtype=np.int32)
-        return np.concatenate([empty, *parts])
+        empty = np.empty((len(table.combos), 0), dtype=np.int32)
+        return np.concatenate([empty, *parts], axis=1).T
 
 
 class ExchangesNull:

@@ -17,6 +17,7 @@ from miner.kernels import tails
 from miner.search import Search, cases_of, placebo_rules
 from miner.time_split import DiscoverySlice, discovery_slice, holdout_slice
 from miner.triggers import Combo
+from tests.calibration import remedies
 from tests.calibration.discrete import cdf_at, from_draws, heyse, step_down, tarone_factor
 from tests.calibration.in_memory import panel_of, study_of
 from tests.calibration.level import Tasks
@@ -34,11 +35,13 @@ QUIET_WORLDS = (
     "busy names",
     "both clusters",
     "calendar, busy",
+    "calendar, busy, common",
     "all held",
     "all held, common",
     "all held, 8 types",
     "sectors unknown",
     "reactive, clustered",
+    "busy spell, mild",
     "busy spell",
 )
 PLANT_WORLDS = ("quiet", "calendar, busy", "all held")
@@ -49,7 +52,7 @@ TRIGGERS = (20, 50, 100, 200, 500, 1000, 2000)
 
 
 def kind_of(combo: Combo, planted: Sequence[Combo]) -> str:
-    """"found": planted so; "near": more or fewer types of one; "shares": a type; else "false"."""
+    """ "found": planted so; "near": more or fewer types of one; "shares": a type; else "false"."""
     mine = set(combo)
     if combo in planted:
         return "found"
@@ -133,6 +136,11 @@ def hunt_world(
                 row["plants"] = _plants(world, found, adjusted, rules)
                 if n_placebo:
                     row["placebo"] = placebo_rules(search, study)
+    hazard = np.where(found.is_proposed, remedies.multiplied_hazard(found.case), 1.0)
+    (adjusted,) = adjusters["bh"].adjusted([hazard])
+    for fdr in FDRS:
+        passing = [combos[c] for c in np.flatnonzero(adjusted <= fdr)]
+        row["passed"][f"hazard {fdr}"] = count_kinds(passing, planted)
     if by_discrete and runs_log_p is not None:
         row["passed"] |= _discrete(found, planted, log_p, runs_log_p)
     return row

@@ -55,23 +55,24 @@ def judge(case: Case, seed: int, *, with_draws: bool = False, with_slow: bool = 
     p_own = OwnTimingNull().judge(case, rows).p_value
     p = {
         "margins": p_margins,
+        "hazard": remedies.multiplied_hazard(case),
         "own timing": p_own,
         "larger of both": np.maximum(p_margins, p_own),
-        "rows by 100": remedies.renewed_rows(case, 100),
+        "rows by 50": remedies.renewed_rows(case, 50),
+        "rows by 25": remedies.renewed_rows(case, 25),
         "recent 10": remedies.split_by_recent(case, 10),
-        "recent 30": remedies.split_by_recent(case, 30),
         "clustered": remedies.widened_by_clusters(case, rates, p_margins),
     }
     facts: dict[str, Any] = {}
     if with_draws:
         hits_rc = Exchanger(case, seed, "judge").hits(DRAWS)
         runs_rc = RunExchanger(case, seed).hits(DRAWS)
-        extra, by_runs = (remedies.inflation(case, drawn) for drawn in (hits_rc, runs_rc))
+        extra = remedies.inflation(case, runs_rc)
         p["exchanges"] = _drawn_p(case, hits_rc)
         p["whole runs"] = _drawn_p(case, runs_rc)
         p["deflated"] = remedies.deflated(p_margins, extra)
         facts |= {"shift": extra.shift, "scale": extra.scale, "p_inflated": extra.p}
-        facts["p_inflated_runs"] = by_runs.p
+        facts["p_inflated_exchanges"] = remedies.inflation(case, hits_rc).p
         some = expected >= ROOMY
         if some.any():
             closed_sd = _closed_sd(case, rates)[some]

@@ -15,7 +15,7 @@ def _level(is_full: bool) -> Tasks:
 
 
 def _nothing(is_full: bool) -> Tasks:
-    return hunts.nothing_planted(150 if is_full else 2)
+    return hunts.nothing_planted(200 if is_full else 2)
 
 
 def _planted(is_full: bool) -> Tasks:
@@ -35,7 +35,7 @@ def _placebo(is_full: bool) -> Tasks:
 
 
 def _practice(is_full: bool) -> Tasks:
-    return practice.tasks(30 if is_full else 1)
+    return practice.tasks(25 if is_full else 1)
 
 
 PARTS: dict[str, Callable[[bool], Tasks]] = {

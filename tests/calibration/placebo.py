@@ -27,7 +27,8 @@ WORLDS = (
     "both clusters",
     "all held",
     "sectors unknown",
-    "busy spell",
+    "reactive, clustered",
+    "busy spell, mild",
 )
 WITH_PLANTS = ("quiet", "calendar, busy")
 

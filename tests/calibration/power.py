@@ -20,9 +20,11 @@ WORLDS = (
     "busy names",
     "both clusters",
     "calendar, busy",
+    "calendar, busy, common",
     "all held",
     "sectors unknown",
     "reactive, clustered",
+    "busy spell, mild",
     "busy spell",
 )
 

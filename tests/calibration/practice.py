@@ -21,12 +21,13 @@ from miner.time_split import discovery_slice
 from miner.search import cases_of
 from tests.calibration.in_memory import panel_of, study_of
 from tests.calibration.level import Tasks
+from tests.calibration.remedies import multiplied_hazard
 from tests.calibration.table import BY_NAME, NamedWorld
 from tests.worlds import TARGET
 
 LEAST_LIFT = 1.2
 FDR = 0.05
-SHUFFLES = 499
+SHUFFLES = 199
 WORLDS = ("quiet", "season", "market", "busy names", "calendar, busy", "all held")
 
 
@@ -56,6 +57,8 @@ def measure(world: NamedWorld, seed: int) -> dict[str, Any]:
             "circular shift, whole family": passed(shifted, found.size),
             "margins, mined only": passed(found.p[mined], mined.size),
         }
+    hazard = np.where(found.is_proposed, multiplied_hazard(case), 1.0)
+    row["passed"]["hazard, whole family"] = passed(hazard, found.size)
     row["passed"]["this tool"] = passed(found.p, found.size)
     rules = explain_away(
         [found], Adjuster([found], "bh"), fdr=FDR, min_triggers=study.mining.min_triggers

@@ -1,7 +1,7 @@
 """Hands on remedies tried for what the margins null does not hold: each gives p-values.
 
-Four ways: hold more fixed (rows renewed every period; columns split by the entity's own recent
-events), or keep the null and widen it (by the clustering of its own residuals; by the left-over
+Hold it by another link (a hazard that multiplies); hold more fixed (rows renewed every period;
+columns split by the entity's own recent events); or keep the null and widen it (by the clustering of its own residuals; by the left-over
 inflation of the whole family, after Devlin & Roeder 1999, Biometrics 55:997-1004).
 """
 
@@ -16,17 +16,16 @@ from miner.kernels import hits as kernels
 from miner.nulls.margins import Margins, fit_margins, judge_hits
 from miner.panel import Labels
 from miner.units import Case
+from tests.calibration.hazard import hazard_rates
 
 SMALLEST = 1e-300
 
 
-def _judge(case: Case, rates: np.ndarray) -> np.ndarray:
+def p_values(case: Case, rates: np.ndarray) -> np.ndarray:
     """P(X >= hits) of every combination under the rates at its triggers."""
     table = case.unit.triggers
     rows = np.arange(len(table.combos))
-    return judge_hits(
-        rows, table.offset_c, rates, case.hits_c, np.ones(rates.size, dtype=bool), 1
-    )
+    return judge_hits(rows, table.offset_c, rates, case.hits_c, np.ones(rates.size, dtype=bool), 1)
 
 
 def renewed_rows(case: Case, period: int) -> np.ndarray:
@@ -44,7 +43,9 @@ def renewed_rows(case: Case, period: int) -> np.ndarray:
     wide = Labels(peers.names, np.repeat(peers.code_et, n_parts, axis=0))
     margins = fit_margins(spread(is_open_et), spread(case.is_window_et), wide)
     table = case.unit.triggers
-    return _judge(case, margins.rates(table.entity * n_parts + part_t[table.session], table.session))
+    return p_values(
+        case, margins.rates(table.entity * n_parts + part_t[table.session], table.session)
+    )
 
 
 def own_recent_events(case: Case, reach: int) -> Labels:
@@ -65,7 +66,12 @@ def split_by_recent(case: Case, reach: int) -> np.ndarray:
     labels = own_recent_events(case, reach)
     margins = fit_margins(case.unit.is_open_et, case.is_window_et, labels)
     table = case.unit.triggers
-    return _judge(case, margins.rates(table.entity, table.session))
+    return p_values(case, margins.rates(table.entity, table.session))
+
+
+def multiplied_hazard(case: Case) -> np.ndarray:
+    """p-values where busy names and busy sessions multiply the events' rate, not their odds."""
+    return p_values(case, hazard_rates(case))
 
 
 def widened_by_clusters(case: Case, rates: np.ndarray, p: np.ndarray) -> np.ndarray:
@@ -165,11 +171,9 @@ def left_over(case: Case, margins: Margins, drawn_worlds: list[np.ndarray]) -> t
 
 def fitted(case: Case) -> tuple[Margins, np.ndarray, np.ndarray]:
     """The margins null as it is: fit, rates at the triggers, p-values."""
-    margins = fit_margins(
-        case.unit.is_open_et, case.is_window_et, case.unit.segment.panel.peers
-    )
+    margins = fit_margins(case.unit.is_open_et, case.is_window_et, case.unit.segment.panel.peers)
     rates = margins.rates(case.unit.triggers.entity, case.unit.triggers.session)
-    return margins, rates, _judge(case, rates)
+    return margins, rates, p_values(case, rates)
 
 
 def expected_hits(case: Case, rates: np.ndarray) -> np.ndarray:

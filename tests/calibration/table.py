@@ -57,6 +57,11 @@ WORLDS = tuple(
         ("reactive", "alerts follow events", {"reactive_alerts": 1.0}),
         ("calendar", "season, market and sector shocks", CALENDAR),
         ("calendar, busy", "and busy names", CALENDAR | {"busy_names": 1.0}),
+        (
+            "calendar, busy, common",
+            "the same, base rate 20 %",
+            CALENDAR | {"busy_names": 1.0, "base_rate": 0.2},
+        ),
         ("all held", "and listing, coverage, bursts", HELD),
         ("all held, rare", "base rate 0.5 %", HELD | {"base_rate": 0.005}),
         ("all held, common", "base rate 20 %", HELD | {"base_rate": 0.2}),
@@ -76,6 +81,7 @@ WORLDS = tuple(
             False,
         ),
         ("busy spell", "each name has busy weeks of its own", {"busy_spell": 1.0}, False),
+        ("busy spell, mild", "a third as much of it", {"busy_spell": 0.3}, False),
         (
             "everything",
             "all held, and the three above",

@@ -37,7 +37,8 @@ def exchange_runs(
         for i in range(n_runs):
             size = np.uint64(pool_start[pool_v[i] + 1] - pool_start[pool_v[i]])
             j = member[
-                pool_start[pool_v[i]] + np.int64((np.uint64(random_nv[n, i]) * size) >> np.uint64(32))
+                pool_start[pool_v[i]]
+                + np.int64((np.uint64(random_nv[n, i]) * size) >> np.uint64(32))
             ]
             a, b = entity_v[i], entity_v[j]
             s, u, length = now_v[i], now_v[j], length_v[i]
