@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +23,7 @@ from miner.panel import (
 from miner.read_tables import Log, SpanTable, read_coverage, read_groups, read_log
 from miner.session_calendar import SessionCalendar, build_calendar
 from miner.settings import Study
+from miner.workers import Progress, silent
 
 MOST_LABELS = 32_000
 
@@ -59,7 +60,7 @@ class Inputs:
     fingerprints: dict[str, str]
 
 
-def assemble(study: Study, progress: Callable[[str], None] = lambda _: None) -> Inputs:
+def assemble(study: Study, progress: Progress = silent) -> Inputs:
     """Read a study's tables and put them on its calendar.
 
     Raises

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -21,6 +20,7 @@ from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
 from miner.triggers import TriggerTable
 from miner.units import Case, make_case, make_unit, stratum_codes
+from miner.workers import Progress, silent
 
 TRIGGER_COUNTS = (20, 50, 100, 200)
 
@@ -52,7 +52,7 @@ def check(
     study: Study | str | Path,
     *,
     n_workers: int | None = None,
-    progress: Callable[[str], None] = lambda _: None,
+    progress: Progress = silent,
 ) -> Check:
     """Read a study's tables and tell what a hunt would have to work with.
 

@@ -6,13 +6,17 @@ Exit status 0 done, 2 the user's input or settings are wrong, 1 a fault of ours.
 from __future__ import annotations
 
 import sys
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from miner.errors import InputError
+
+if TYPE_CHECKING:
+    from miner.workers import Progress
 
 OVERVIEW = """Find which combinations of alerts come before events more often than chance, the
 calendar and busy names explain.
@@ -99,15 +103,34 @@ def show(lines: Iterable[str]) -> None:
 
 
 @contextmanager
-def shown_progress() -> Iterator[Callable[[str], None]]:
-    """Progress on standard error: a live line on a terminal, plain lines elsewhere."""
-    if sys.stderr.isatty():
-        from rich.console import Console
+def shown_progress() -> Iterator[Progress]:
+    """Progress on standard error: a live bar on a terminal, a line a stage elsewhere."""
+    if not sys.stderr.isatty():
+        yield _line
+        return
+    from rich import progress as bars
+    from rich.console import Console
 
-        with Console(stderr=True).status("starting") as status:
-            yield lambda stage: status.update(f"{stage} ...")
-    else:
-        yield lambda stage: click.echo(f"{stage} ...", err=True)
+    columns = (
+        bars.TextColumn("{task.description:<32}"),
+        bars.BarColumn(),
+        bars.TimeElapsedColumn(),
+    )
+    with bars.Progress(*columns, console=Console(stderr=True), transient=True) as shown:
+        task = shown.add_task("starting", total=None)
+
+        def tell(stage: str, share: float | None = None) -> None:
+            if share is None:
+                shown.reset(task, description=stage, total=None)
+            else:
+                shown.update(task, description=stage, total=1.0, completed=share)
+
+        yield tell
+
+
+def _line(stage: str, share: float | None = None) -> None:
+    if share is None:
+        click.echo(f"{stage} ...", err=True)
 
 
 if __name__ == "__main__":

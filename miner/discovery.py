@@ -16,6 +16,7 @@ from miner.nulls.exchanges import Exchanger
 from miner.nulls.margins import ROWS_A_BLOCK, Margins, cannot_pass, fit_margins, judge_hits
 from miner.proposals import count_windows, propose
 from miner.units import Case
+from miner.workers import Progress, silent
 
 TIE = 0.01  # drawn log p-values are interpolated and rounded by less: within it, a tie
 
@@ -138,10 +139,12 @@ class Adjuster:
         return self._null_cr is not None
 
 
-def draw_log_p(found: Found, n_draws: int, seed: int, n_workers: int = 1) -> np.ndarray:
+def draw_log_p(
+    found: Found, n_draws: int, seed: int, n_workers: int = 1, progress: Progress = silent
+) -> np.ndarray:
     """log p of every family member in worlds with exchanged sessions: float32 [family, draws]."""
     table = found.case.unit.triggers
-    hits_cr = Exchanger(found.case, seed, "joint").hits(n_draws, n_workers).T
+    hits_cr = Exchanger(found.case, seed, "joint").hits(n_draws, n_workers, progress).T
 
     def rank(block: tuple[int, int]) -> np.ndarray:
         part = slice(*block)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import platform
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from importlib.metadata import version
@@ -29,6 +29,7 @@ from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
 from miner.walk_forward import FoldRule, walk_forward
 from miner.wording import combination_name
+from miner.workers import Progress, silent
 
 PACKAGES = (
     "combination-signal-miner",
@@ -71,7 +72,7 @@ class Hunt:
 class Stages:
     """Times the stages and tells a listener of each."""
 
-    listener: Callable[[str], None] = lambda _: None
+    listener: Progress = silent
     seconds: dict[str, float] = field(default_factory=dict)
 
     @contextmanager
@@ -121,7 +122,7 @@ def hunt(
     *,
     n_workers: int | None = None,
     replace: bool = False,
-    progress: Callable[[str], None] = lambda _: None,
+    progress: Progress = silent,
 ) -> Hunt:
     """Find the combinations of alerts that precede events, and judge them on later data.
 
@@ -131,7 +132,7 @@ def hunt(
     output : folder to write; it appears whole or not at all. None writes nothing
     n_workers : threads; the answer does not depend on it
     replace : put the new folder in the place of one that exists
-    progress : called with the name of each stage as it begins
+    progress : called with the name of each stage as it begins, and with the share done of some
 
     Raises
     ------
@@ -146,14 +147,14 @@ def hunt(
     windows, testing = study.windows, study.testing
 
     with stages.stage("reading"):
-        inputs = assemble(study)
+        inputs = assemble(study, progress)
         last, first = split_sessions(inputs)
     panel = inputs.panel
     early = discovery_slice(panel, last)
     with stages.stage("searching"):
         found = search(early, inputs.targets, study, progress=progress, n_workers=n_workers)
     with stages.stage("placebo worlds"):
-        placebo = placebo_rules(found, study, n_workers)
+        placebo = placebo_rules(found, study, n_workers, progress)
     rules = found.chosen()
     with stages.stage("holdout"):
         outcomes = judge_holdout(

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from miner import workers
@@ -14,6 +14,7 @@ from miner.settings import Study
 from miner.time_split import DiscoverySlice
 from miner.triggers import find_family
 from miner.units import Case, make_case, make_unit, stratum_codes
+from miner.workers import Progress, silent
 
 
 @dataclass(frozen=True)
@@ -85,7 +86,7 @@ def search(
     study: Study,
     *,
     with_draws: bool = True,
-    progress: Callable[[str], None] = lambda _: None,
+    progress: Progress = silent,
     n_workers: int = 1,
 ) -> Search:
     """Find the rules of a segment.
@@ -106,7 +107,9 @@ def search(
     draws = None
     if testing.permutations and (with_draws or testing.adjust == "westfall-young"):
         progress("exchanging sessions")
-        draws = [draw_log_p(f, testing.permutations, testing.seed, n_workers) for f in found]
+        draws = [
+            draw_log_p(f, testing.permutations, testing.seed, n_workers, progress) for f in found
+        ]
     adjuster = Adjuster(found, testing.adjust, draws)
     progress("explaining away")
     explanation = explain_away(
@@ -115,7 +118,9 @@ def search(
     return Search(tuple(found), adjuster, explanation)
 
 
-def placebo_rules(real: Search, study: Study, n_workers: int = 1) -> list[int]:
+def placebo_rules(
+    real: Search, study: Study, n_workers: int = 1, progress: Progress = silent
+) -> list[int]:
     """Number of rules the same search finds in each of ``study.testing.placebo`` drawn worlds.
 
     A drawn world exchanges sessions between events of one peer group, case by case; triggers and
@@ -144,4 +149,4 @@ def placebo_rules(real: Search, study: Study, n_workers: int = 1) -> list[int]:
         )
         return len(explanation.rules)
 
-    return workers.in_order(count, range(n_worlds), n_workers)
+    return workers.in_order(count, range(n_worlds), n_workers, "placebo worlds", progress)

@@ -86,7 +86,7 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
     )
     if counts["rules"]:
         yield entry("Rules", f"{counts['rules']} account for all that passed")
-        yield entry("Confirmed", f"{counts['confirmed']} of the {counts['rules']} held on the holdout")
+        yield entry("Confirmed", f"{counts['confirmed']} of them held on the holdout")
     placebo = record["placebo"]
     if placebo["worlds"]:
         yield entry(
@@ -247,10 +247,10 @@ def check_lines(result: Check) -> Iterator[str]:
     yield from aligned(("target", "family", "events", "base rate", "held out", "base rate"), rows)
     yield ""
     yield (
-        f"Power: smallest precision that passes discovery at {percent(record['fdr'])} as the only "
+        f"Power: smallest precision that passes discovery at {100 * record['fdr']:g}% as the only "
         "finding, and"
     )
-    yield f"the holdout at {percent(record['alpha'])} as the only rule, at the base rates above"
+    yield f"the holdout at {100 * record['alpha']:g}% as the only rule, at the base rates above"
     counts = sorted(result.power["triggers"].unique())
     power_rows: list[tuple[str, ...]] = []
     for (target, stratum), part in result.power.groupby(["target", "stratum"], sort=False):

@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
-from typing import TypeVar
+from typing import Protocol, TypeVar
 
 Item = TypeVar("Item")
 Result = TypeVar("Result")
@@ -16,13 +16,41 @@ def n_default() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def in_order(work: Callable[[Item], Result], items: Iterable[Item], n_workers: int) -> list[Result]:
-    """``[work(item) for item in items]``, on threads (kernels release the interpreter lock)."""
+class Progress(Protocol):
+    """What is told of long work: a stage as it begins, then the share of it that is done."""
+
+    def __call__(self, stage: str, share: float | None = None) -> None:
+        """Take note of it."""
+
+
+def silent(stage: str, share: float | None = None) -> None:
+    """Progress that nobody listens to."""
+
+
+def in_order(
+    work: Callable[[Item], Result],
+    items: Iterable[Item],
+    n_workers: int,
+    stage: str = "",
+    progress: Progress = silent,
+) -> list[Result]:
+    """``[work(item) for item in items]``, on threads (kernels release the interpreter lock).
+
+    With a ``stage`` the share of items done is told after each.
+    """
     items = list(items)
-    if n_workers <= 1 or len(items) <= 1:
-        return [work(item) for item in items]
-    with ThreadPoolExecutor(min(n_workers, len(items))) as pool:
-        return list(pool.map(work, items))
+    results: list[Result] = []
+    with ThreadPoolExecutor(max(1, min(n_workers, len(items)))) as pool:
+        try:
+            done = map(work, items) if n_workers <= 1 else pool.map(work, items)
+            for result in done:
+                results.append(result)
+                if stage:
+                    progress(stage, len(results) / len(items))
+        except BaseException:
+            pool.shutdown(cancel_futures=True)
+            raise
+    return results
 
 
 def blocks(n: int, size: int) -> list[tuple[int, int]]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -20,7 +20,7 @@ from miner.summary import WIDTH, hunt_lines, p_text
 from miner.time_split import discovery_slice
 from miner.triggers import find_triggers
 from miner.units import make_case, make_unit
-from miner.workers import n_default
+from miner.workers import Progress, n_default, silent
 
 SHUFFLES = 99
 
@@ -40,7 +40,7 @@ def play(
     *,
     seed: int | None = None,
     n_workers: int | None = None,
-    progress: Callable[[str], None] = lambda _: None,
+    progress: Progress = silent,
 ) -> Played:
     """Write the scenario into ``folder``, hunt in it, and put the decoy before the plain shuffle.
 

@@ -9,7 +9,9 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
-import numba
+import numba as _numba
+
+numba: Any = _numba  # its stubs know neither the configuration nor options given together
 
 
 def _cache_folder() -> str | None:

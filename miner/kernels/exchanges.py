@@ -7,7 +7,6 @@ import numpy as np
 from miner.kernels.bits import ONE
 from miner.kernels.compiling import kernel
 
-
 LANES = 4  # words of draws side by side: one vector register
 CELLS_A_BLOCK = 100_000  # cells whose words are kept at hand
 
@@ -35,9 +34,7 @@ def flip_event(busy_ew, e, t):
 
 
 @kernel
-def exchange(
-    session_v, entity_v, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep
-):
+def exchange(session_v, entity_v, pool_v, pool_start, pool_member, slot_et, random_nv, n_keep):
     """Run sweeps of exchanges and keep the last ``n_keep`` states.
 
     Parameters
@@ -104,9 +101,7 @@ def exchange(
 
 
 @kernel
-def count_hits(
-    session_rv, first_event_e, offset_c, entity, session, horizon, n_sessions, n_planes
-):
+def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_sessions, n_planes):
     """Hits of every combination in up to 256 draws at once.
 
     Four words a cell hold, bit by bit, in which draws the cell is in an event window. Adding

@@ -14,6 +14,7 @@ from miner.nulls import Judgement
 from miner.panel import Events
 from miner.seeds import stream
 from miner.units import Case
+from miner.workers import Progress, silent
 
 DRAWS_A_BLOCK = 256
 BURN_IN = 10
@@ -74,7 +75,7 @@ class Exchanger:
                 order = np.lexsort((drawn, entity))
                 yield entity[order], drawn[order]
 
-    def hits(self, n_draws: int, n_workers: int = 1) -> np.ndarray:
+    def hits(self, n_draws: int, n_workers: int = 1, progress: Progress = silent) -> np.ndarray:
         """Hits of every combination of the case in each draw: int32 [draws, combinations]."""
         unit = self.case.unit
         table = unit.triggers
@@ -93,7 +94,8 @@ class Exchanger:
                 n_planes,
             )
 
-        parts = workers.in_order(count, workers.blocks(n_draws, DRAWS_A_BLOCK), n_workers)
+        blocks = workers.blocks(n_draws, DRAWS_A_BLOCK)
+        parts = workers.in_order(count, blocks, n_workers, "exchanging sessions", progress)
         empty = np.empty((len(table.combos), 0), dtype=np.int32)
         return np.concatenate([empty, *parts], axis=1).T
 

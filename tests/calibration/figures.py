@@ -5,16 +5,14 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 
-import matplotlib as mpl
 import numpy as np
+from matplotlib import pyplot as plt
 
 from tests.calibration.summarise import Mean, Row
 
-mpl.use("Agg")
-mpl.rcParams.update({"svg.hashsalt": "calibration", "font.size": 9, "axes.spines.right": False})
-mpl.rcParams.update({"axes.spines.top": False})
-
-from matplotlib import pyplot as plt
+plt.switch_backend("Agg")
+plt.rcParams.update({"svg.hashsalt": "calibration", "font.size": 9, "axes.spines.right": False})
+plt.rcParams.update({"axes.spines.top": False})
 
 SAVE = {"format": "svg", "metadata": {"Date": None}, "bbox_inches": "tight"}
 

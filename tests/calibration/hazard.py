@@ -58,8 +58,8 @@ def sweep(spell_e, start_i, stop_i, group_i, u_e, v_gt, target_e, target_gt, is_
     return worst
 
 
-def hazard_rates(case: Case) -> np.ndarray:
-    """q = 1 - exp(-u v) at every trigger, fitted to the margins of the case."""
+def hazard_rates(case: Case, entity: np.ndarray, session: np.ndarray) -> np.ndarray:
+    """q = 1 - exp(-u v) at open cells of the case, fitted to its margins: float64 [cells]."""
     unit = case.unit
     peers = unit.segment.panel.peers
     spells = kernels.find_spells(unit.is_open_et, peers.code_et)
@@ -75,7 +75,6 @@ def hazard_rates(case: Case) -> np.ndarray:
     for _ in range(MOST_SWEEPS):
         if sweep(*spells, u_e, v_gt, target_e, target_gt, is_col) < TOLERANCE:
             break
-    entity, session = unit.triggers.entity, unit.triggers.session
     # the kernel gives q of odds u v, and 0 or 1 in sure cells; only the others change
     odds = kernels.cell_rates(entity, session, peers.code_et, u_e, v_gt, row_order, col_order)
     group = peers.code_et[entity, session]

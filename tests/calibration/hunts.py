@@ -2,17 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
 from functools import partial
 from typing import Any
 
 import numpy as np
 
-from miner.discovery import Adjuster, Found, draw_log_p, find
+from miner.columns import CONFIRMED
 from miner.discovery import TIE as SLACK
+from miner.discovery import Adjuster, Found, draw_log_p, find
 from miner.explain_away import explain_away
 from miner.holdout import judge_holdout
-from miner.columns import CONFIRMED
 from miner.kernels import tails
 from miner.search import Search, cases_of, placebo_rules
 from miner.time_split import DiscoverySlice, discovery_slice, holdout_slice

@@ -17,8 +17,8 @@ from miner.discovery import Adjuster, find
 from miner.explain_away import explain_away
 from miner.nulls.own_timing import OwnTimingNull
 from miner.nulls.plain_shuffle import PlainShuffleNull
-from miner.time_split import discovery_slice
 from miner.search import cases_of
+from miner.time_split import discovery_slice
 from tests.calibration.in_memory import panel_of, study_of
 from tests.calibration.level import Tasks
 from tests.calibration.remedies import multiplied_hazard

@@ -96,8 +96,8 @@ date (random effects on the logit).
 {table}""",
     "placebo": """## 9. Placebo against truth
 
-At a nominal 20 %, where false rules can be counted: false rules a hunt really found, beside the mean
-over 20 worlds drawn for the placebo from the same data (with plants: rules unrelated to any).
+At a nominal 20 %, where false rules can be counted: false rules a hunt really found, beside the
+mean over 20 worlds drawn for the placebo from the same data (with plants: rules unrelated to any).
 
 {table}""",
     "practice": """## 10. Usual practice on pure noise
@@ -105,8 +105,8 @@ over 20 worlds drawn for the placebo from the same data (with plants: rules unre
 Combinations reported at a nominal 5 %, mean a world and share of worlds with any, when nothing is
 there. Usual practice mines combinations frequent before events with a lift above 1.2 and adjusts
 (Benjamini-Hochberg) over those: against the base rate (binomial), against alerts shuffled within
-each entity's life, against histories shifted in a circle. The last columns are this tool's gate over
-the whole family, the same with the hazard form, and this tool's rules.
+each entity's life, against histories shifted in a circle. The last columns are this tool's gate
+over the whole family, the same with the hazard form, and this tool's rules.
 
 {table}""",
     "foot": """## How to make it again

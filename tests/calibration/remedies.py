@@ -1,8 +1,9 @@
 """Hands on remedies tried for what the margins null does not hold: each gives p-values.
 
 Hold it by another link (a hazard that multiplies); hold more fixed (rows renewed every period;
-columns split by the entity's own recent events); or keep the null and widen it (by the clustering of its own residuals; by the left-over
-inflation of the whole family, after Devlin & Roeder 1999, Biometrics 55:997-1004).
+columns split by the entity's own recent events); or keep the null and widen it (by the clustering
+of its own residuals; by the left-over inflation of the whole family, after Devlin & Roeder 1999,
+Biometrics 55:997-1004).
 """
 
 from __future__ import annotations
@@ -31,7 +32,7 @@ def p_values(case: Case, rates: np.ndarray) -> np.ndarray:
 def renewed_rows(case: Case, period: int) -> np.ndarray:
     """p-values where each entity's own rate starts afresh every ``period`` sessions."""
     is_open_et = case.unit.is_open_et
-    n_entities, n_sessions = is_open_et.shape
+    n_sessions = is_open_et.shape[1]
     part_t = np.arange(n_sessions) // period
     n_parts = int(part_t[-1]) + 1
     is_part_pt = part_t == np.arange(n_parts)[:, None]
@@ -43,9 +44,8 @@ def renewed_rows(case: Case, period: int) -> np.ndarray:
     wide = Labels(peers.names, np.repeat(peers.code_et, n_parts, axis=0))
     margins = fit_margins(spread(is_open_et), spread(case.is_window_et), wide)
     table = case.unit.triggers
-    return p_values(
-        case, margins.rates(table.entity * n_parts + part_t[table.session], table.session)
-    )
+    row = table.entity * n_parts + part_t[table.session]
+    return p_values(case, margins.rates(row, table.session))
 
 
 def own_recent_events(case: Case, reach: int) -> Labels:
@@ -71,7 +71,8 @@ def split_by_recent(case: Case, reach: int) -> np.ndarray:
 
 def multiplied_hazard(case: Case) -> np.ndarray:
     """p-values where busy names and busy sessions multiply the events' rate, not their odds."""
-    return p_values(case, hazard_rates(case))
+    table = case.unit.triggers
+    return p_values(case, hazard_rates(case, table.entity, table.session))
 
 
 def widened_by_clusters(case: Case, rates: np.ndarray, p: np.ndarray) -> np.ndarray:
@@ -146,7 +147,7 @@ def left_over(case: Case, margins: Margins, drawn_worlds: list[np.ndarray]) -> t
     blocks apart). Both against ``drawn_worlds``, window flags of worlds with the same margins.
     """
     is_open_et = case.unit.is_open_et
-    n_entities, n_sessions = is_open_et.shape
+    n_sessions = is_open_et.shape[1]
     rates_et = np.zeros(is_open_et.shape)
     entity, session = np.nonzero(is_open_et)
     rates_et[entity, session] = margins.rates(entity, session)

@@ -93,34 +93,36 @@ class RunExchanger:
         )
         return entity, start, stop - start, group
 
-    def hits(self, n_draws: int) -> np.ndarray:
-        """Hits of every combination in each of ``n_draws`` draws, one chain."""
+    def starts(self, n_draws: int) -> np.ndarray:
+        """First sessions of the runs in each of ``n_draws`` draws of one chain."""
         entity, start, length, group = self.runs
-        unit, table = self.case.unit, self.case.unit.triggers
-        n_entities, n_sessions = unit.is_open_et.shape
+        n_entities = self.case.unit.is_open_et.shape[0]
         _, pool_v = np.unique(group.astype(np.int64) * 100_000 + length, return_inverse=True)
-        pool_start = np.concatenate([[0], np.cumsum(np.bincount(pool_v))]).astype(np.int64)
-        first_e = np.searchsorted(entity, np.arange(n_entities + 1)).astype(np.int64)
-        rng = stream(self.seed, "whole runs")
-        random_nv = rng.integers(0, 1 << 32, (BURN_IN + n_draws, entity.size), dtype=np.uint32)
-        kept = exchange_runs(
+        random_nv = stream(self.seed, "whole runs").integers(
+            0, 1 << 32, (BURN_IN + n_draws, entity.size), dtype=np.uint32
+        )
+        return exchange_runs(
             start,
             length,
             entity,
-            first_e,
+            np.searchsorted(entity, np.arange(n_entities + 1)).astype(np.int64),
             pool_v.astype(np.int32),
-            pool_start,
+            np.concatenate([[0], np.cumsum(np.bincount(pool_v))]).astype(np.int64),
             np.argsort(pool_v, kind="stable").astype(np.int32),
             self._room(),
             random_nv,
             n_draws,
         )
+
+    def hits(self, n_draws: int) -> np.ndarray:
+        """Hits of every combination in each draw: int32 [draws, combinations]."""
+        entity, _, length, _ = self.runs
+        table = self.case.unit.triggers
         return count_run_hits(
-            kept,
+            self.starts(n_draws),
             length,
             entity,
-            n_entities,
-            n_sessions,
+            *self.case.unit.is_open_et.shape,
             table.offset_c,
             table.entity,
             table.session,

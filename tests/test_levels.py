@@ -1,0 +1,136 @@
+"""Simulation: noise stays at its level and makes no rules; what is planted is what is found."""
+
+from collections import Counter
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+from worlds import Plant, make_world, write_world
+
+from miner import Hunt, hunt
+from miner.columns import CONFIRMED, EXPLAINED, JOINER
+from miner.nulls.margins import MarginsNull
+
+# Season, market and sector shocks and busy names drive alerts and events alike.
+FORCES = {"season": 0.6, "market_shocks": 0.6, "sector_shocks": 0.6, "busy_names": 0.6}
+SIZE = {"n_entities": 300, "n_sessions": 500, "n_types": 10}
+PLANTED = (
+    Plant((0, 1), 0.25, 500),
+    Plant((2, 3), 0.35, 300),
+    Plant((4, 5, 6), 0.60, 150, life=(0.0, 0.55)),  # dead before the holdout
+)
+RULES = {"k00 + k01", "k02 + k03", "k04 + k05 + k06"}
+
+
+def hunted(folder: Path, seed: int, **options: Any) -> Hunt:
+    """A hunt in a drawn world, without what is drawn or judged beside the rules."""
+    settings = {"testing": {"placebo": 0, "permutations": 0}, "holdout": {"folds": 0}}
+    return hunt(write_world(make_world(seed, **SIZE, **options), folder, settings=settings))
+
+
+def share_below(case_of: Any, seeds: range, **options: Any) -> float:
+    """Share of the whole family's p-values under .05, pooled over worlds."""
+    p = []
+    for seed in seeds:
+        case = case_of(seed, **SIZE, **options)
+        p.append(MarginsNull().judge(case, np.arange(len(case.unit.triggers.combos))).p_value)
+    together = np.concatenate(p)
+    assert together.size > 100 * len(seeds)
+    assert (together < 1).mean() > 0.95
+    return float((together < 0.05).mean())
+
+
+def test_noise_is_at_its_level(case_of):
+    assert 0.01 < share_below(case_of, range(20), **FORCES) <= 0.06
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize(
+    "options",
+    [
+        FORCES,
+        {"season": 1.0, "market_shocks": 1.0},
+        {"sector_shocks": 1.0, "busy_names": 1.0},
+        {**FORCES, "listing": 0.4, "type_coverage": 0.3},
+        {**FORCES, "clustered_alerts": 0.5},
+    ],
+    ids=["forces", "calendar", "sectors and busy names", "coverage", "clustered alerts"],
+)
+def test_noise_is_at_its_level_in_many_worlds(case_of, options):
+    assert 0.005 < share_below(case_of, range(100, 220), **options) <= 0.06
+
+
+def worlds_with_rules(folder: Path, seeds: range) -> int:
+    n_with_any = 0
+    for seed in seeds:
+        result = hunted(folder / str(seed), seed, **FORCES)
+        assert result.record["counts"]["candidates"] > 100
+        n_with_any += len(result.rules) > 0
+    return n_with_any
+
+
+def test_noise_makes_no_rules(tmp_path):
+    assert worlds_with_rules(tmp_path, range(15)) <= 1
+
+
+@pytest.mark.slow
+def test_noise_seldom_makes_rules_in_many_worlds(tmp_path):
+    assert worlds_with_rules(tmp_path, range(100, 200)) <= 7
+
+
+def found_exactly(folder: Path, seeds: range) -> int:
+    """Worlds whose rules are the planted ones; whatever else, none is missed."""
+    n_exact = 0
+    for seed in seeds:
+        result = hunted(folder / str(seed), seed, planted=PLANTED, **FORCES)
+        rules = result.rules.set_index("combination")
+        assert set(rules.index) >= RULES
+        n_exact += set(rules.index) == RULES
+        verdicts = rules["verdict"]
+        assert verdicts["k00 + k01"] == verdicts["k02 + k03"] == CONFIRMED
+        assert verdicts["k04 + k05 + k06"] != CONFIRMED
+        relatives = result.candidates.query(
+            "verdict == @EXPLAINED", local_dict={"EXPLAINED": EXPLAINED}
+        )
+        assert len(relatives) >= 3
+        near = [bool(set(c.split(JOINER)) & set(by.split(JOINER)))
+                for c, by in relatives[["combination", "explained_by"]].to_numpy()]  # fmt: skip
+        assert np.mean(near) > 0.5
+    return n_exact
+
+
+def test_three_planted_combinations_are_the_rules(tmp_path):
+    assert found_exactly(tmp_path, range(3)) == 3
+
+
+@pytest.mark.slow
+def test_three_planted_combinations_are_the_rules_nine_times_in_ten(tmp_path):
+    assert found_exactly(tmp_path, range(100, 130)) >= 27
+
+
+def test_a_rare_sharper_triple_stands_beside_its_common_pair(tmp_path):
+    """The pair is followed one time in five, with the third type seven in ten."""
+    planted = (Plant((0, 1), 0.2, 600), Plant((0, 1, 2), 0.7, 60))
+    seen: Counter[str] = Counter()
+    for seed in range(4):
+        rules = hunted(tmp_path / str(seed), seed, planted=planted, **FORCES).rules
+        seen.update(rules["combination"] + " > " + rules["sharpens"])
+    assert seen["k00 + k01 > "] == 4
+    assert seen["k00 + k01 + k02 > k00 + k01"] >= 3
+    assert sum(seen.values()) <= 9
+
+
+def test_a_type_that_is_nearly_always_on_is_part_of_no_rule(tmp_path):
+    """Its supersets of the planted pair trigger with the pair, and give way to it."""
+    for seed in range(3):
+        world = make_world(
+            seed, **{**SIZE, "n_types": 5}, alerts_per_type=6000, planted=(Plant((0, 1), 0.3, 400),)
+        )
+        path = write_world(
+            world,
+            tmp_path / str(seed),
+            settings={"holdout": {"folds": 0}, "testing": {"placebo": 0}},
+        )
+        result = hunt(path)
+        assert result.rules["combination"].tolist() == ["k00 + k01"]
