@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from functools import cached_property
 
 import numpy as np
 
-from miner.kernels import bits
+from miner.kernels import bits, margins
 
 Events = tuple[np.ndarray, np.ndarray]
 
@@ -20,6 +21,11 @@ class Labels:
 
     names: tuple[str, ...]
     code_et: np.ndarray
+
+    @cached_property
+    def single_e(self) -> np.ndarray:
+        """Code of each entity that has one label throughout, else -1: int16 [entities]."""
+        return margins.single_groups(self.code_et)
 
 
 @dataclass(frozen=True)

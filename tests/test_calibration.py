@@ -19,8 +19,9 @@ from tests.calibration.whole_runs import RunExchanger
 from tests.worlds import Plant, write_world
 
 ALLOWED = 1.2
-# Worlds whose claim the full study found to hold; the others are reported there, not hidden here.
-HELD = [w.name for w in WORLDS if w.is_claimed and "common" not in w.name and "40" not in w.name]
+# The full study reports these as broken or too slow for every day.
+NOT_HERE = ("calendar, busy, common", "all held, common", "all held, 40 types")
+HELD = [w.name for w in WORLDS if w.is_claimed and w.name not in NOT_HERE]
 
 
 def _shares(name: str, seeds: Sequence[int], level: float = 0.05) -> np.ndarray:
@@ -40,7 +41,7 @@ def _is_broken(shares: np.ndarray, level: float = 0.05) -> bool:
 
 @pytest.mark.parametrize("name", HELD)
 def test_level_of_the_margins_null_holds_where_it_is_claimed(name: str) -> None:
-    assert not _is_broken(_shares(name, range(1000, 1008)))
+    assert not _is_broken(_shares(name, range(1000, 1020)))
 
 
 def test_level_over_all_claimed_worlds_is_at_most_nominal() -> None:

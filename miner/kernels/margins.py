@@ -162,12 +162,30 @@ def row_sweep(
 
 
 @kernel
-def cell_rates(entity, session, group_et, u_e, v_gt, row_order, col_order):
-    """q of the cells (entity[i], session[i]): float64, the shape of ``entity``."""
+def single_groups(group_et):
+    """The group of each entity that is in one throughout, else -1: int16 [entities]."""
+    group_e = np.empty(group_et.shape[0], dtype=np.int16)
+    for e in range(group_et.shape[0]):
+        group_e[e] = group_et[e, 0]
+        for t in range(1, group_et.shape[1]):
+            if group_et[e, t] != group_et[e, 0]:
+                group_e[e] = -1
+                break
+    return group_e
+
+
+@kernel
+def cell_rates(entity, session, group_et, group_e, u_e, v_gt, row_order, col_order):
+    """q of the cells (entity[i], session[i]): float64, the shape of ``entity``.
+
+    ``group_e`` is ``single_groups(group_et)``: it spares most cells a look into a large array.
+    """
     q = np.empty(entity.size, dtype=np.float64)
     for i in range(entity.size):
         e, t = entity[i], session[i]
-        g = group_et[e, t]
+        g = group_e[e]
+        if g < 0:
+            g = group_et[e, t]
         row, col = row_order[e], col_order[g, t]
         if row == 0 and col == 0:
             w = u_e[e] * v_gt[g, t]

@@ -42,8 +42,9 @@ def shift_p_values(
         if hits[i] == 0:
             continue
         least = hits[i]
-        p_x = np.zeros(least)
-        p_x[0] = 1.0
+        now = np.zeros(least)
+        after = np.zeros(least)
+        now[0] = 1.0
         tail = 0.0
         high = 0
         j, last = offset_c[row[i]], offset_c[row[i] + 1]
@@ -93,18 +94,19 @@ def shift_p_values(
                     share_h[h] += 1.0
                 for h in range(most + 1):
                     share_h[h] /= length
-                # add this entity: states from the top so that each is read before it is written
-                for x in range(high, -1, -1):
-                    mass = p_x[x]
-                    if mass == 0.0:
+                # add this entity
+                top = min(least - 1, high + most)
+                for x in range(top + 1):
+                    after[x] = now[x] * share_h[0]
+                for h in range(1, most + 1):
+                    if share_h[h] == 0.0:
                         continue
-                    p_x[x] = mass * share_h[0]
-                    for h in range(1, most + 1):
-                        if x + h >= least:
-                            tail += mass * share_h[h]
-                        else:
-                            p_x[x + h] += mass * share_h[h]
-                high = min(least - 1, high + most)
+                    for x in range(h, top + 1):
+                        after[x] += now[x - h] * share_h[h]
+                    for x in range(max(0, least - h), high + 1):
+                        tail += now[x] * share_h[h]
+                now, after = after, now
+                high = top
             j = stop
         p[i] = max(TINY, min(1.0, tail))
     return p

@@ -51,6 +51,7 @@ class Margins:
             entity,
             session,
             self.peers.code_et,
+            self.peers.single_e,
             self.odds_e,
             self.odds_gt,
             self.row_order,

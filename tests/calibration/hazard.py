@@ -75,8 +75,10 @@ def hazard_rates(case: Case, entity: np.ndarray, session: np.ndarray) -> np.ndar
     for _ in range(MOST_SWEEPS):
         if sweep(*spells, u_e, v_gt, target_e, target_gt, is_col) < TOLERANCE:
             break
-    # the kernel gives q of odds u v, and 0 or 1 in sure cells; only the others change
-    odds = kernels.cell_rates(entity, session, peers.code_et, u_e, v_gt, row_order, col_order)
     group = peers.code_et[entity, session]
-    is_fitted = is_row[entity] & is_col[group, session]
-    return np.where(is_fitted, -np.expm1(-u_e[entity] * v_gt[group, session]), odds)
+    row, column = row_order[entity], col_order[group, session]
+    # of a cell's row and column the one that was settled first decides
+    is_by_row = (column == 0) | ((row != 0) & (np.abs(row) < np.abs(column)))
+    sure = np.where(is_by_row, row, column) > 0
+    rates = -np.expm1(-u_e[entity] * v_gt[group, session])
+    return np.where((row == 0) & (column == 0), rates, sure.astype(float))

@@ -46,7 +46,8 @@ QUIET_WORLDS = (
 )
 PLANT_WORLDS = ("quiet", "calendar, busy", "all held")
 PLANT_TYPES = 14
-PLANT_SIZE = {"n_types": PLANT_TYPES, "alerts_per_type": 800}
+# types published throughout, so that every plant finds room
+PLANT_SIZE = {"n_types": PLANT_TYPES, "alerts_per_type": 800, "type_coverage": 0.0}
 LIFTS = (1.5, 2.0, 3.0, 5.0, 8.0)
 TRIGGERS = (20, 50, 100, 200, 500, 1000, 2000)
 

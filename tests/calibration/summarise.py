@@ -9,6 +9,13 @@ from typing import Any
 import numpy as np
 
 Row = dict[str, Any]
+Results = dict[str, list[Row]]
+
+
+def table(head: Sequence[str], rows: Sequence[Sequence[str]]) -> str:
+    """A markdown table."""
+    body = [head, ["---"] * len(head), *rows]
+    return "\n".join("| " + " | ".join(cells) + " |" for cells in body)
 
 
 @dataclass(frozen=True)
@@ -46,9 +53,9 @@ def ratio(tops: Iterable[float], bottoms: Iterable[float]) -> Mean:
     return Mean(value, float(np.sqrt((spread**2).sum()) / bottom.sum()), top.size)
 
 
-def by_world(rows: Sequence[Row]) -> dict[str, list[Row]]:
+def by_world(rows: Sequence[Row]) -> Results:
     """Results by world, in order of appearance; runs without a family are left out."""
-    worlds: dict[str, list[Row]] = {}
+    worlds: Results = {}
     for row in rows:
         if row["result"] is not None:
             worlds.setdefault(row["key"]["world"], []).append(row["result"])

@@ -2,8 +2,7 @@
 
 Events of one entity closer than the horizon share part of their windows. Exchanging single events
 tears such runs apart, and the drawn worlds then hold more window cells than the observed one. Here
-runs of equal length and peer group exchange their places instead, so that every entity keeps its
-number of window cells and every peer group its number on each session, exactly.
+whole runs of one peer group exchange their places instead.
 """
 
 from __future__ import annotations
@@ -24,7 +23,7 @@ from miner.units import Case
 def exchange_runs(
     start_v, length_v, entity_v, first_e, pool_v, pool_start, member, room_et, random_nv, n_keep
 ):
-    """As ``miner.kernels.exchanges.exchange`` for runs of ``length_v`` cells that must not touch.
+    """As the exchange of single events, for runs of ``length_v`` cells that must not touch.
 
     ``room_et`` int32 [entities, sessions]: open cells of the same peer group from here on without
     a break, so that a run of n cells fits where it is at least n. Peer groups must not change
@@ -41,14 +40,15 @@ def exchange_runs(
                 + np.int64((np.uint64(random_nv[n, i]) * size) >> np.uint64(32))
             ]
             a, b = entity_v[i], entity_v[j]
-            s, u, length = now_v[i], now_v[j], length_v[i]
-            if a == b or s == u or room_et[a, u] < length or room_et[b, s] < length:
+            s, u = now_v[i], now_v[j]
+            if a == b or s == u or room_et[a, u] < length_v[i] or room_et[b, s] < length_v[j]:
                 continue
             is_free = True
             for side in range(2):
                 e = a if side == 0 else b
                 place = u if side == 0 else s
                 own = i if side == 0 else j
+                length = length_v[own]
                 for v in range(first_e[e], first_e[e + 1]):
                     if v != own and now_v[v] <= place + length and place <= now_v[v] + length_v[v]:
                         is_free = False
@@ -79,10 +79,15 @@ def count_run_hits(start_rv, length_v, entity_v, n_entities, n_sessions, offset_
 
 @dataclass(frozen=True)
 class RunExchanger:
-    """Worlds of a case in which whole runs of window cells exchange places."""
+    """Worlds of a case in which whole runs of window cells exchange places.
+
+    ``alike``: only runs of equal length do, which holds the margins of windows exactly; else any
+    two of a peer group, which holds those of runs' first sessions, as single events' are held.
+    """
 
     case: Case
     seed: int
+    alike: bool = True
 
     @cached_property
     def runs(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
@@ -97,7 +102,8 @@ class RunExchanger:
         """First sessions of the runs in each of ``n_draws`` draws of one chain."""
         entity, start, length, group = self.runs
         n_entities = self.case.unit.is_open_et.shape[0]
-        _, pool_v = np.unique(group.astype(np.int64) * 100_000 + length, return_inverse=True)
+        kind = group.astype(np.int64) * 100_000 + (length if self.alike else 0)
+        _, pool_v = np.unique(kind, return_inverse=True)
         random_nv = stream(self.seed, "whole runs").integers(
             0, 1 << 32, (BURN_IN + n_draws, entity.size), dtype=np.uint32
         )
