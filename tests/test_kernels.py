@@ -12,6 +12,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from scipy.stats import chi2, poisson_binom
 
+from miner.discovery import TIE
 from miner.kernels import bits, exchanges, hits, margins, shifts, tails, triggers, windows
 from miner.sharper import NODES, WEIGHTS
 
@@ -228,7 +229,8 @@ def test_spells_totals_and_what_is_sure(seed, share):
     assert (kept_rc == left_rc).all()
     entity, session = np.nonzero(is_open)
     q = margins.cell_rates(
-        entity, session, group, np.ones(5), np.ones((2, 12)), row_order, col_order
+        entity, session, group, margins.single_groups(group), np.ones(5), np.ones((2, 12)),
+        row_order, col_order,
     )
     is_left = left_rc[entity, column[entity, session]]
     assert (q[is_left] == 0.5).all()
@@ -362,19 +364,20 @@ def test_upper_tails_at_the_edges_of_what_is_possible():
     assert middle == pytest.approx(tails.exact_tail(q[450:], 120), rel=1e-4)
 
 
-@pytest.mark.parametrize(("n", "first", "last"), [(30, 0, 12), (400, 20, 90), (5000, 400, 2100)])
+@pytest.mark.parametrize(("n", "first", "last"), [(30, 0, 12), (400, 20, 90), (5000, 450, 680)])
 def test_tables_of_tails_fall_and_agree(n, first, last):
     q = np.random.default_rng(n).beta(1, 8, n)
     table = tails.tail_table(q, first, last)
     exact = np.array([tails.exact_tail(q, x) for x in range(first, min(last, 1200) + 1)])
     told = table[: exact.size]
-    assert (np.diff(np.log(np.maximum(table, tails.TINY))) < 1e-9).all()
-    assert told[0] == pytest.approx(exact[0], rel=1e-9)
+    assert (np.diff(np.log(np.maximum(table, tails.TINY))) < 2 * TIE).all()
     if n * (last + 1) <= tails.TABLE_WORK:
         np.testing.assert_allclose(told, exact, rtol=1e-11)
-    else:  # chords of a log-concave curve: never above it, and near it
-        assert (told <= exact * (1 + 5e-4)).all()
-        assert (np.log(told) >= 1.1 * np.log(exact) - 2.0).all()
+    else:  # joined between knots, over the width that draws have
+        is_tail = exact < 0.5
+        assert is_tail.sum() > 50
+        np.testing.assert_allclose(np.log(told)[is_tail], np.log(exact)[is_tail], rtol=0, atol=TIE)
+        np.testing.assert_allclose(told, exact, atol=0.02)
 
 
 def test_ranks_of_draws_are_log_tails_of_the_observed_rates():
@@ -484,7 +487,7 @@ def run_exchanges(entity, session, slot_et, n_sweeps, seed):
         0, 1 << 32, (n_sweeps, entity.size), dtype=np.uint32
     )
     kept = exchanges.exchange(
-        session, entity, first, pool.astype(np.int32), start, member, slot_et, random, n_sweeps
+        session, entity, pool.astype(np.int32), start, member, slot_et, random, n_sweeps
     )
     return kept, first
 
@@ -551,17 +554,17 @@ def test_hits_over_all_exchanges_follow_hoeffding_1951():
         offset = np.array([0, len(cells)])
         return exchanges.count_hits(session_rv, np.arange(5), offset, entity, session, 8, 100, 5)
 
-    counted = count(drawn)[:, 0]
+    counted = count(drawn)[0]
     assert (counted.mean(), counted.var()) == pytest.approx((4.75, 5.6875))
     assert (counted >= 10).sum() == 2
-    assert count(sessions[None].astype(np.int32))[0, 0] == np.trace(HOEFFDING_C) == 10
+    assert count(sessions[None].astype(np.int32)).tolist() == [np.trace(HOEFFDING_C)] == [10]
     kept, _ = run_exchanges(range(4), sessions, np.zeros((4, 100), dtype=np.int16), 20_000, 3)
-    chain = np.concatenate([count(part)[:, 0] for part in np.split(kept[::5], 80)])
+    chain = np.concatenate([count(part)[0] for part in np.split(kept[::5], 16)])
     assert chain.mean() == pytest.approx(4.75, abs=4 * math.sqrt(5.6875 / 4000))
     assert chain.var() == pytest.approx(5.6875, rel=0.1)
 
 
-@given(seeds, st.integers(1, 64), st.sampled_from([5, 64, 130]))
+@given(seeds, st.integers(1, 256), st.sampled_from([5, 64, 130]))
 def test_hits_of_many_draws_are_counted_one_by_one(seed, n_draws, n_sessions):
     rng = np.random.default_rng(seed)
     n_entities, horizon = 5, int(rng.integers(1, 5))
@@ -572,24 +575,25 @@ def test_hits_of_many_draws_are_counted_one_by_one(seed, n_draws, n_sessions):
     is_trigger = rng.random((3, n_entities, n_sessions)) < 0.2
     _, entity, session = np.nonzero(is_trigger)
     offset = np.concatenate([[0], np.cumsum(is_trigger.sum(axis=(1, 2)))])
-    planes = max(1, int(np.diff(offset).max()).bit_length())
+    planes = max(4, int(np.diff(offset).max()).bit_length())
     found = exchanges.count_hits(drawn, first, offset, entity, session, horizon, n_sessions, planes)
     for r in range(n_draws):
         is_window = windows.mark_windows(owner, drawn[r], n_entities, n_sessions, horizon)
-        assert (found[r] == [(is_trigger[c] & is_window).sum() for c in range(3)]).all()
+        assert (found[:, r] == [(is_trigger[c] & is_window).sum() for c in range(3)]).all()
 
 
 def test_hits_are_counted_across_blocks_of_entities():
     """Long calendars are counted block by block; blocks without events are passed over."""
     rng = np.random.default_rng(8)
-    n_entities, n_sessions = 60, 3000  # 13 entities a block
-    events = np.sort(np.concatenate([rng.integers(0, 10, 40), rng.integers(45, 60, 40)]))
+    n_entities, n_sessions = 120, 3000
+    assert exchanges.CELLS_A_BLOCK // n_sessions < 40  # at least three blocks
+    events = np.sort(np.concatenate([rng.integers(0, 10, 40), rng.integers(105, 120, 40)]))
     first = np.searchsorted(events, np.arange(n_entities + 1))
-    drawn = rng.integers(0, n_sessions, (64, events.size)).astype(np.int32)
-    is_trigger = rng.random((2, n_entities, n_sessions)) < 0.05
+    drawn = rng.integers(0, n_sessions, (130, events.size)).astype(np.int32)
+    is_trigger = rng.random((2, n_entities, n_sessions)) < 0.02
     _, entity, session = np.nonzero(is_trigger)
     offset = np.concatenate([[0], np.cumsum(is_trigger.sum(axis=(1, 2)))])
     found = exchanges.count_hits(drawn, first, offset, entity, session, 5, n_sessions, 15)
-    for r in (0, 31, 63):
+    for r in (0, 63, 64, 129):
         is_window = windows.mark_windows(events, drawn[r], n_entities, n_sessions, 5)
-        assert (found[r] == [(is_trigger[c] & is_window).sum() for c in range(2)]).all()
+        assert (found[:, r] == [(is_trigger[c] & is_window).sum() for c in range(2)]).all()

@@ -1,6 +1,7 @@
 """Simulation: noise stays at its level and makes no rules; what is planted is what is found."""
 
 from collections import Counter
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -20,13 +21,13 @@ PLANTED = (
     Plant((2, 3), 0.35, 300),
     Plant((4, 5, 6), 0.60, 150, life=(0.0, 0.55)),  # dead before the holdout
 )
+RULES_ONLY = {"testing": {"placebo": 0, "permutations": 0}, "holdout": {"folds": 0}}
 RULES = {"k00 + k01", "k02 + k03", "k04 + k05 + k06"}
 
 
 def hunted(folder: Path, seed: int, **options: Any) -> Hunt:
     """A hunt in a drawn world, without what is drawn or judged beside the rules."""
-    settings = {"testing": {"placebo": 0, "permutations": 0}, "holdout": {"folds": 0}}
-    return hunt(write_world(make_world(seed, **SIZE, **options), folder, settings=settings))
+    return hunt(write_world(make_world(seed, **SIZE, **options), folder, settings=RULES_ONLY))
 
 
 def share_below(case_of: Any, seeds: range, **options: Any) -> float:
@@ -42,7 +43,8 @@ def share_below(case_of: Any, seeds: range, **options: Any) -> float:
 
 
 def test_noise_is_at_its_level(case_of):
-    assert 0.01 < share_below(case_of, range(20), **FORCES) <= 0.06
+    """Shares of single worlds scatter widely, since their combinations share types and events."""
+    assert 0.03 < share_below(case_of, range(300, 360), **FORCES) <= 0.06
 
 
 @pytest.mark.slow
@@ -90,13 +92,11 @@ def found_exactly(folder: Path, seeds: range) -> int:
         verdicts = rules["verdict"]
         assert verdicts["k00 + k01"] == verdicts["k02 + k03"] == CONFIRMED
         assert verdicts["k04 + k05 + k06"] != CONFIRMED
-        relatives = result.candidates.query(
-            "verdict == @EXPLAINED", local_dict={"EXPLAINED": EXPLAINED}
-        )
+        relatives = result.candidates[result.candidates["verdict"] == EXPLAINED]
         assert len(relatives) >= 3
-        near = [bool(set(c.split(JOINER)) & set(by.split(JOINER)))
-                for c, by in relatives[["combination", "explained_by"]].to_numpy()]  # fmt: skip
-        assert np.mean(near) > 0.5
+        names = relatives[["combination", "explained_by"]].to_numpy()
+        shares = [bool(set(c.split(JOINER)) & set(by.split(JOINER))) for c, by in names]
+        assert np.mean(shares) > 0.5
     return n_exact
 
 
@@ -110,8 +110,8 @@ def test_three_planted_combinations_are_the_rules_nine_times_in_ten(tmp_path):
 
 
 def test_a_rare_sharper_triple_stands_beside_its_common_pair(tmp_path):
-    """The pair is followed one time in five, with the third type seven in ten."""
-    planted = (Plant((0, 1), 0.2, 600), Plant((0, 1, 2), 0.7, 60))
+    """The pair is followed one time in five, with the third type four in five."""
+    planted = (Plant((0, 1), 0.2, 500), Plant((0, 1, 2), 0.8, 120))
     seen: Counter[str] = Counter()
     for seed in range(4):
         rules = hunted(tmp_path / str(seed), seed, planted=planted, **FORCES).rules
@@ -122,15 +122,19 @@ def test_a_rare_sharper_triple_stands_beside_its_common_pair(tmp_path):
 
 
 def test_a_type_that_is_nearly_always_on_is_part_of_no_rule(tmp_path):
-    """Its supersets of the planted pair trigger with the pair, and give way to it."""
-    for seed in range(3):
+    """With an alert on half of all sessions its supersets trigger with the pair and give way."""
+    for seed in range(4):
         world = make_world(
-            seed, **{**SIZE, "n_types": 5}, alerts_per_type=6000, planted=(Plant((0, 1), 0.3, 400),)
+            seed, **{**SIZE, "n_types": 6}, alerts_per_type=800, planted=[Plant((0, 1), 0.3, 400)]
         )
-        path = write_world(
-            world,
-            tmp_path / str(seed),
-            settings={"holdout": {"folds": 0}, "testing": {"placebo": 0}},
+        usual = np.array([world.alert_entity, world.alert_type, world.alert_session])
+        entity, session = np.nonzero(np.random.default_rng(seed).random((300, 500)) < 0.5)
+        always = np.array([entity, np.full(entity.size, 5), session])
+        alerts = np.hstack([usual[:, world.alert_type != 5], always]).astype(np.int32)
+        world = replace(
+            world, alert_entity=alerts[0], alert_type=alerts[1], alert_session=alerts[2]
         )
-        result = hunt(path)
+        result = hunt(write_world(world, tmp_path / str(seed), settings=RULES_ONLY))
         assert result.rules["combination"].tolist() == ["k00 + k01"]
+        q_value = result.candidates.set_index("combination")["q_value"]
+        assert q_value["k00 + k01 + k05"] < 1e-20

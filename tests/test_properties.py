@@ -118,7 +118,6 @@ def test_discovery_is_blind_to_what_comes_after_it(seed, tmp_path):
     def redrawn(log, kinds):
         kept = {row for row in log if row[2] <= last}
         draws = [rng.choice(x, 200).tolist() for x in (world.known, kinds, range(last + 1, n))]
-
         return frozenset(kept | set(zip(*draws, strict=True)))
 
     other = replace(

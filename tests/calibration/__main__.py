@@ -1,4 +1,4 @@
-"""``python -m tests.calibration --form short|full [--part NAME ...] [--lines FOLDER] [--report]``.
+"""``python -m tests.calibration --form short|full [--part NAME ...] [--lines FOLDER] [--report FOLDER]``.
 
 Runs the study's parts and keeps one json line a run; a run that is there is not made again.
 """
@@ -18,7 +18,7 @@ def main() -> None:
     parser.add_argument("--form", choices=FORMS, default="short")
     parser.add_argument("--part", choices=list(PARTS), nargs="*", help="default: every part")
     parser.add_argument("--lines", type=Path, default=Path("build/calibration"))
-    parser.add_argument("--report", action="store_true", help="write reports/calibration.md too")
+    parser.add_argument("--report", type=Path, metavar="FOLDER", help="write calibration.md there")
     parser.add_argument("--minutes", type=float, default=float("inf"), help="per part, at most")
     asked = parser.parse_args()
     folder = asked.lines / asked.form
@@ -32,10 +32,10 @@ def main() -> None:
         ):
             if n % 100 == 0:
                 print(f"  {n} runs, the last {row['key']}", flush=True)
-    if asked.report:
+    if asked.report is not None:
         from tests.calibration.report import write_report
 
-        write_report(folder, Path("reports"), lines.versions())
+        write_report(folder, asked.report, lines.versions())
 
 
 if __name__ == "__main__":

@@ -147,7 +147,7 @@ over the whole family, the same with the hazard form, and this tool's rules.
     "foot": """## How to make it again
 
 ```
-python -m tests.calibration --form full --report
+python -m tests.calibration --form full --report reports
 ```
 
 One core. {runs} runs, {minutes} minutes; each is one json line in `build/calibration/full`, so that

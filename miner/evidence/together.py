@@ -1,0 +1,88 @@
+"""Which alert types come together more than busy names and busy days explain.
+
+When a type arrives (a trigger of it alone), is another there, with an alert in the look-back that
+ends on that session? What is expected holds, for the other type, how often each entity has it in
+its look-back and how often each peer group has it on each session: the margins null, with alerts
+in the place of events. No event is looked at.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from miner import workers
+from miner.kernels import bits
+from miner.kernels import hits as hit_kernels
+from miner.kernels import triggers as trigger_kernels
+from miner.nulls.margins import fit_margins
+from miner.panel import Panel
+from miner.triggers import TriggerTable
+
+
+@dataclass(frozen=True)
+class Together:
+    """Arrivals of one type (row) that find another there (column): arrays [types, types].
+
+    Attributes
+    ----------
+    arrivals : int64, arrivals of the row's type where the column's is covered
+    seen : int64, of those, with the column's type in the look-back
+    expected, variance : float64, under the null; NaN on the diagonal
+    """
+
+    arrivals: np.ndarray
+    seen: np.ndarray
+    expected: np.ndarray
+    variance: np.ndarray
+
+    @property
+    def ratio(self) -> np.ndarray:
+        """Seen over expected, NaN where nothing is expected."""
+        ratio = np.full(self.expected.shape, np.nan)
+        return np.divide(self.seen, self.expected, out=ratio, where=self.expected > 0)
+
+    @property
+    def excess(self) -> np.ndarray:
+        """Seen less expected in standard deviations, NaN where nothing is open."""
+        excess = np.full(self.expected.shape, np.nan)
+        spread = np.sqrt(self.variance)
+        return np.divide(self.seen - self.expected, spread, out=excess, where=spread > 0)
+
+
+def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int = 1) -> Together:
+    """Co-occurrence of all types.
+
+    ``singles`` holds the triggers of each type alone, in order of type, wherever its own type is
+    covered.
+    """
+    n_types = len(panel.type_names)
+    entity, session, offset_c = singles.entity, singles.session, singles.offset_c
+    every_row = np.arange(n_types)
+
+    def column(k: int) -> tuple[np.ndarray, ...]:
+        is_open_et = bits.unpack(
+            np.ascontiguousarray(panel.cover_eqw[:, panel.class_k[k]]), panel.n_sessions
+        )
+        is_open_et[:, : lookback - 1] = False
+        on_ew = _kept_on(np.ascontiguousarray(panel.alert_ekw[:, k]), lookback)
+        is_on_et = bits.unpack(on_ew, panel.n_sessions)
+        margins = fit_margins(is_open_et, is_on_et & is_open_et, panel.peers)
+        is_there = hit_kernels.look_up(entity, session, is_on_et)
+        is_asked = hit_kernels.look_up(entity, session, is_open_et)
+        rates = margins.rates(entity, session)
+        return hit_kernels.tally(every_row, offset_c, rates, is_there, is_asked)
+
+    columns = workers.in_order(column, range(n_types), n_workers)
+    parts = [np.stack(part, axis=1) for part in zip(*columns, strict=True)]
+    for part in parts[2:]:
+        np.fill_diagonal(part, np.nan)
+    return Together(*parts)
+
+
+def _kept_on(alert_ew: np.ndarray, lookback: int) -> np.ndarray:
+    """Each row's bits kept on for ``lookback`` sessions."""
+    on_ew = np.empty_like(alert_ew)
+    trigger_kernels.smear(alert_ew, lookback, on_ew)
+    return on_ew
