@@ -58,15 +58,26 @@ workers_option = click.option(
     help="Folder to write.  [default: NAME-run beside the study]",
 )
 @click.option("--replace", is_flag=True, help="Replace the folder of an earlier run.")
+@click.option("--compare-models", is_flag=True,
+              help="Fit classifiers too, and set their precision beside the rules'.")  # fmt: skip
 @workers_option
-def hunt(study: Path, output: Path | None, replace: bool, workers: int | None) -> None:
+def hunt(
+    study: Path, output: Path | None, replace: bool, compare_models: bool, workers: int | None
+) -> None:
     """Find rules in STUDY (a settings file) and judge them on later data."""
     from miner.hunting import hunt as run
     from miner.summary import hunt_lines
 
     with shown_progress() as progress:
         folder = output or study.with_name(f"{study.stem}-run")
-        result = run(study, folder, n_workers=workers, replace=replace, progress=progress)
+        result = run(
+            study,
+            folder,
+            n_workers=workers,
+            replace=replace,
+            compare=compare_models,
+            progress=progress,
+        )
     show(hunt_lines(result))
 
 

@@ -20,6 +20,7 @@ from miner.by_quarter import by_quarter
 from miner.candidates import candidates_table, rules_table
 from miner.chosen import ChosenRule
 from miner.columns import CONFIRMED, JOINER
+from miner.compare_models import compare_models
 from miner.errors import SettingsError, explain
 from miner.explain_away import Rule
 from miner.holdout import Outcome, judge_holdout
@@ -122,6 +123,7 @@ def hunt(
     *,
     n_workers: int | None = None,
     replace: bool = False,
+    compare: bool = False,
     progress: Progress = silent,
 ) -> Hunt:
     """Find the combinations of alerts that precede events, and judge them on later data.
@@ -132,6 +134,7 @@ def hunt(
     output : folder to write; it appears whole or not at all. None writes nothing
     n_workers : threads; the answer does not depend on it
     replace : put the new folder in the place of one that exists
+    compare : fit classifiers too, and set their precision on the holdout beside the rules'
     progress : called with the name of each stage as it begins, and with the share done of some
 
     Raises
@@ -151,6 +154,7 @@ def hunt(
         last, first = split_sessions(inputs)
     panel = inputs.panel
     early = discovery_slice(panel, last)
+    late = holdout_slice(panel, first, panel.n_sessions - 1)
     with stages.stage("searching"):
         found = search(early, inputs.targets, study, progress=progress, n_workers=n_workers)
     with stages.stage("placebo worlds"):
@@ -158,7 +162,7 @@ def hunt(
     rules = found.chosen()
     with stages.stage("holdout"):
         outcomes = judge_holdout(
-            holdout_slice(panel, first, panel.n_sessions - 1),
+            late,
             rules,
             alpha=study.holdout.alpha,
             lookback=windows.lookback,
@@ -171,6 +175,18 @@ def hunt(
     with stages.stage("walk-forward"):
         folds, fold_rules = walk_forward(panel, inputs.targets, study, n_workers)
         quarters = by_quarter(panel, inputs.calendar.dates, rules, study, n_workers)
+    models = None
+    if compare:
+        with stages.stage("fitting classifiers"):
+            models = compare_models(
+                early,
+                late,
+                inputs.calendar.dates,
+                rules,
+                [outcome.verdict == CONFIRMED for outcome in outcomes],
+                study,
+                n_workers,
+            )
     shuffled = None
     if testing.shuffle:
         with stages.stage("plain shuffle"):
@@ -241,6 +257,7 @@ def hunt(
             }
             for number, (until, start, stop) in enumerate(folds, start=1)
         ],
+        "models": models,
         "seconds": stages.seconds,
     }
     result = Hunt(

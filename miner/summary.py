@@ -81,7 +81,7 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
     others = [f"{n:,} by {how}" for how, n in counts["passed"].items() if how != adjust]
     yield entry(
         "Passed",
-        f"{counts['passed'].get(adjust, 0):,} beat the margins null at {percent(fdr)} ({adjust}"
+        f"{counts['passed'].get(adjust, 0):,} beat the margins null at {100 * fdr:g}% ({adjust}"
         + (f"; {', '.join(others)})" if others else ")"),
     )
     if counts["rules"]:
@@ -96,6 +96,7 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
             f"{percent(placebo['share_with_any'])} of them)",
         )
     yield from _walk_text(record)
+    yield from _models_text(record)
     for warning in record["warnings"]:
         yield entry("Note", warning)
     yield ""
@@ -199,6 +200,20 @@ def _walk_text(record: dict[str, Any]) -> Iterator[str]:
                 f"; on the fold after, {hits} of {triggers} triggers hit ({expected:.1f} expected)"
             )
         yield entry("Walk-forward", text)
+
+
+def _models_text(record: dict[str, Any]) -> Iterator[str]:
+    for row in record["models"] or ():
+        kind = row["against"]
+        others = ", ".join(
+            f"{percent(row[name])} by {name}"
+            for name in ("gradient boosting", "logistic regression")
+        )
+        yield entry(
+            "Classifiers",
+            f"{row['target']}, {row['triggers']:,} holdout triggers each: "
+            f"{percent(row[kind])} by the {kind}, {others}",
+        )
 
 
 def _of(target: str, stratum: str) -> str:

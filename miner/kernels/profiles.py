@@ -41,9 +41,7 @@ def has_trigger_before(event_entity, event_session, entity, session, horizon):
     i = 0
     for v in range(event_entity.size):
         e, s = event_entity[v], event_session[v]
-        while i < entity.size and (
-            entity[i] < e or (entity[i] == e and session[i] < s - horizon)
-        ):
+        while i < entity.size and (entity[i] < e or (entity[i] == e and session[i] < s - horizon)):
             i += 1
         is_called[v] = i < entity.size and entity[i] == e and session[i] < s
     return is_called

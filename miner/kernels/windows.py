@@ -48,3 +48,27 @@ def slots(is_open_et, group_et, horizon):
             if s - latest <= horizon:
                 slot_et[e, s] = group_et[e, latest]
     return slot_et
+
+
+@kernel
+def spaced(rank_et, below, rest):
+    """Cells with a rank under ``below``, each at least ``rest`` sessions after the last one taken
+    on its entity. Returns int64 entity, session."""
+    n = 0
+    for ranks_t in rank_et:
+        last = -(1 << 30)
+        for t in range(ranks_t.size):
+            if ranks_t[t] < below and t - last >= rest:
+                last = t
+                n += 1
+    entity = np.empty(n, dtype=np.int64)
+    session = np.empty(n, dtype=np.int64)
+    n = 0
+    for e in range(rank_et.shape[0]):
+        last = -(1 << 30)
+        for t in range(rank_et.shape[1]):
+            if rank_et[e, t] < below and t - last >= rest:
+                last = t
+                entity[n], session[n] = e, t
+                n += 1
+    return entity, session

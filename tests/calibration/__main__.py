@@ -1,4 +1,4 @@
-"""``python -m tests.calibration --form short|full [--part NAME ...] [--lines FOLDER] [--report FOLDER]``.
+"""``python -m tests.calibration --form short|full [--part NAME ...] [--report FOLDER]``.
 
 Runs the study's parts and keeps one json line a run; a run that is there is not made again.
 """

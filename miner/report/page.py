@@ -1,0 +1,297 @@
+"""Lays a run out as one page: what each part of the template is given."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+from collections.abc import Iterator
+from functools import cache
+from importlib import resources
+from typing import Any
+
+from jinja2 import Environment, PackageLoader, StrictUndefined
+from markupsafe import Markup
+
+from miner.columns import CONFIRMED, REFUTED, UNDERPOWERED
+from miner.report import charts, words
+from miner.report.read_run import Row, Run
+
+MOST_ROWS = 1_500
+MOST_EXPLAINED = 12
+MOST_PAIRS = 8
+NOTABLE_EXCESS = 4.0
+NEARLY_ALWAYS = 0.8
+TIMINGS = {
+    "precedes": "precedes",
+    "both": "precedes and follows",
+    "follows": "follows only",
+    "neither": "no clear tie",
+}
+
+
+def page(run: Run) -> str:
+    """The whole page."""
+    style, script = _asset("report.css"), _asset("report.js")
+    rules = [_rule(run, i) for i in range(len(run.rules))]
+    return _environment().get_template("report.html.j2").render(
+        run=run.record,
+        counts=run.record["counts"],
+        evidence=run.evidence,
+        style=Markup(style),
+        script=Markup(script),
+        policy=f"default-src 'none'; script-src '{_hash(script)}'; style-src '{_hash(style)}'; "
+        "base-uri 'none'; form-action 'none'",
+        rules=rules,
+        axis=charts.interval_axis(_highest(run.rules)),
+        by_verdict={
+            verdict: [rule for rule in rules if rule["row"]["verdict"] == verdict]
+            for verdict in (CONFIRMED, REFUTED, UNDERPOWERED)
+        },
+        several=_several(run),
+        distrust=list(_distrust(run, rules)),
+        types=_types(run),
+        matrix=_matrix(run),
+        funnel=list(_funnel(run)),
+        candidates=_candidates(run),
+        settings=list(_flat(run.record["settings"])),
+        cautions=words.CAUTIONS,
+    )
+
+
+@cache
+def _environment() -> Environment:
+    environment = Environment(
+        loader=PackageLoader("miner.report"),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    environment.filters |= words.FILTERS
+    environment.globals |= {"span": words.span, "some": words.some}
+    return environment
+
+
+def _asset(name: str) -> str:
+    return (resources.files("miner.report") / "templates" / name).read_text(encoding="utf-8")
+
+
+def _hash(text: str) -> str:
+    """What a content-security policy calls a script or style it lets pass."""
+    digest = hashlib.sha256(text.encode("utf-8")).digest()
+    return f"sha256-{base64.b64encode(digest).decode('ascii')}"
+
+
+def _highest(rules: list[Row]) -> float:
+    """The upper end of the interval plots' common scale."""
+    ends = [rule[key] for rule in rules for key in ("precision_high", "holdout_high")]
+    return min(1.0, 1.05 * max((end for end in ends if end is not None), default=1.0))
+
+
+def _several(run: Run) -> dict[str, bool]:
+    """Whether the run has more than one target, and more than one stratum."""
+    units = run.record["margins"]
+    return {
+        key: len({unit[key] for unit in units}) > 1 for key in ("target", "stratum")
+    }
+
+
+def _rule(run: Run, i: int) -> dict[str, Any]:
+    row, step, facts = run.rules[i], run.record["rules"][i], run.evidence["rules"][i]
+    reach, horizon = run.evidence["reach"], run.evidence["horizon"]
+    quarters = [q for q in run.quarters if q["rule_order"] == row["rule_order"]]
+    explained = sorted(
+        (c for c in run.candidates if _order_of(run, c) == row["rule_order"]),
+        key=lambda c: (c["p_value"], c["combination"]),
+    )
+    first = run.record["split"]["holdout_first"]
+    return {
+        "row": row,
+        "order": row["rule_order"],
+        "step": step,
+        "facts": facts,
+        "plot": charts.interval_plot(row, _highest(run.rules)),
+        "nulls": [
+            (when, charts.null_plot(facts["null"][key], when))
+            for key, when in (("discovery", "discovery"), ("holdout", "the holdout"))
+        ],
+        "quarters": charts.quarter_plot(
+            quarters, f"{first[:4]}Q{(int(first[5:7]) + 2) // 3}"
+        )
+        if quarters
+        else None,
+        "profiles": [
+            (when, charts.profile_plot(facts["profile"][key], reach, horizon))
+            for key, when in (("discovery", "discovery"), ("holdout", "the holdout"))
+        ],
+        "leads": charts.lead_plot(facts["lead"]["counts"]),
+        "explained": explained[:MOST_EXPLAINED],
+        "n_explained": len(explained),
+    }
+
+
+def _order_of(run: Run, candidate: Row) -> int | None:
+    """Number of the rule that explains a candidate: of its own target and stratum, or named."""
+    said = candidate["explained_by"]
+    if not said:
+        return None
+    own = f"{said} [{candidate['target']}, {candidate['stratum']}]"
+    return run.rule_of.get(own, run.rule_of.get(said))
+
+
+def _distrust(run: Run, rules: list[dict[str, Any]]) -> Iterator[Markup]:
+    """What to be wary of, a sentence or two each."""
+    few = [
+        rule["order"]
+        for rule in rules
+        if rule["step"]["holdout"]["too_few_clusters"] and rule["row"]["holdout_triggers"]
+    ]
+    if few:
+        yield Markup("Too few clusters for a close interval: {} {}.").format(*_rule_list(few))
+    own = [rule["order"] for rule in rules if (rule["row"]["p_own_timing"] or 0) > 0.05]
+    if own:
+        yield Markup(
+            "The nulls disagree on {} {}: the entities' own timing explains what the margins do "
+            "not. A busy spell that drives both alerts and events looks like this."
+        ).format(*_rule_list(own))
+    apart = run.evidence["disagreement"]
+    if apart["margins_only"]:
+        yield Markup(
+            "{} that passed {} explained by the entities' own timing (own-timing p above {})."
+        ).format(
+            words.some(apart["margins_only"], "combination"),
+            "is" if apart["margins_only"] == 1 else "are",
+            words.percent(run.record["settings"]["testing"]["fdr"]),
+        )
+    if apart["own_timing_only"]:
+        yield Markup(
+            "{} pass only when each entity's history is shifted as a whole, and not once the "
+            "calendar of their peers is held: shared seasons and shocks, not information."
+        ).format(words.some(apart["own_timing_only"], "combination"))
+    for warning in (*run.record["warnings"], *run.evidence["warnings"]):
+        yield Markup("{}").format(warning)
+
+
+def _rule_list(orders: list[int]) -> tuple[str, Markup]:
+    links = [Markup('<a href="#rule-{0}">{0}</a>').format(order) for order in orders]
+    return "rule" if len(orders) == 1 else "rules", Markup(words.listed(links))
+
+
+def _types(run: Run) -> list[dict[str, Any]]:
+    """Per target the profiles of all types: those that precede first."""
+    evidence = run.evidence
+    targets = []
+    for target in evidence["targets"]:
+        mine = [p for p in evidence["profiles"] if p["target"] == target]
+        mine.sort(key=lambda p: (list(TIMINGS).index(p["timing"]), p["type"]))
+        targets.append(
+            {
+                "target": target,
+                "panels": [
+                    {
+                        "name": evidence["types"][p["type"]],
+                        "timing": TIMINGS[p["timing"]],
+                        "profile": p,
+                        "plot": charts.profile_plot(
+                            p,
+                            evidence["reach"],
+                            evidence["horizon"],
+                            small=True,
+                            what=f"Rate of {target}",
+                        ),
+                    }
+                    for p in mine
+                ],
+            }
+        )
+    return targets
+
+
+def _matrix(run: Run) -> dict[str, Any]:
+    """Types against types: the table's cells, and the pairs that stand out."""
+    both, names = run.evidence["together"], run.evidence["types"]
+    cells, pairs, always = [], [], []
+    for i, name in enumerate(names):
+        line = []
+        for j, other in enumerate(names):
+            ratio, excess = both["ratio"][i][j], both["excess"][i][j]
+            n, seen = both["arrivals"][i][j], both["seen"][i][j]
+            heat = ""
+            if ratio is not None and excess is not None and abs(excess) >= NOTABLE_EXCESS:
+                heat = _heat(ratio)
+                if ratio > 1:
+                    pairs.append((excess, name, other, seen, n, ratio))
+            if i != j and n and seen >= NEARLY_ALWAYS * n:
+                always.append((name, other, seen, n))
+            line.append((None if i == j else ratio, heat))
+        cells.append((i + 1, name, line))
+    pairs.sort(key=lambda pair: (-pair[0], pair[1:3]))
+    return {
+        "names": names,
+        "cells": cells,
+        "pairs": [pair[1:] for pair in pairs[:MOST_PAIRS]],
+        "n_pairs": len(pairs),
+        "always": always[:MOST_PAIRS],
+        "notable": NOTABLE_EXCESS,
+    }
+
+
+def _heat(ratio: float) -> str:
+    for least, kind in ((5, "h4"), (2.5, "h3"), (1.5, "h2"), (1.0, "h1")):
+        if ratio >= least:
+            return kind
+    return "c1" if ratio >= 0.67 else "c2"
+
+
+def _funnel(run: Run) -> Iterator[tuple[str, int, Markup, str]]:
+    counts, settings = run.record["counts"], run.record["settings"]
+    adjust = settings["testing"]["adjust"]
+    family = max(1, counts["family"])
+    minimum = settings["mining"]["min_triggers"]
+    lines = [
+        ("Family", counts["family"], f"combinations with at least {minimum} triggers, looked at "
+         "or not; every adjustment divides by this number"),
+        ("Proposed", counts["candidates"], "of them, seen often enough before events"),
+    ]
+    said = {
+        "bh": "false discovery rate (Benjamini–Hochberg)",
+        "by": "false discovery rate under any dependence (Benjamini–Yekutieli)",
+        "westfall-young": "family-wise error by joint draws (Westfall–Young)",
+    }
+    for how, n in sorted(counts["passed"].items(), key=lambda item: item[0] != adjust):
+        used = "the one that counts: " if how == adjust else "for comparison: "
+        lines.append((f"Passed, {how}", n, used + said[how]))
+    lines += [
+        ("Rules", counts["rules"], "that account for what passed"),
+        ("Confirmed", counts["confirmed"], "of them, on the holdout"),
+    ]
+    for title, n, text in lines:
+        yield title, n, charts.bar(n / family), text
+
+
+def _candidates(run: Run) -> dict[str, Any]:
+    """Rows of the big table, the smallest p first."""
+    rows = sorted(
+        run.candidates,
+        key=lambda c: (c["p_value"], c["target"], c["stratum"], c["combination"]),
+    )
+    shown = rows[:MOST_ROWS]
+    return {
+        "rows": [(row, row["rule_order"] or _order_of(run, row)) for row in shown],
+        "n": len(rows),
+        "verdicts": sorted({row["verdict"] for row in shown}),
+        "targets": sorted({row["target"] for row in shown}),
+        "strata": sorted({row["stratum"] for row in shown}),
+    }
+
+
+def _flat(settings: dict[str, Any], before: str = "") -> Iterator[tuple[str, str]]:
+    for key, value in settings.items():
+        if isinstance(value, dict):
+            yield from _flat(value, f"{before}{key}.")
+        elif isinstance(value, list):
+            yield f"{before}{key}", ", ".join(map(str, value))
+        elif value is not None:
+            yield f"{before}{key}", str(value)
+
+
