@@ -14,7 +14,7 @@ from miner.time_split import discovery_slice, holdout_slice
 
 @pytest.fixture(scope="module")
 def parts(tmp_path_factory):
-    plant = worlds.Plant(("t00", "t01"), 0.6, 300)
+    plant = worlds.Plant((0, 1), 0.6, 300)
     world = worlds.make_world(
         5, n_entities=60, n_sessions=400, n_types=5, base_rate=0.03, alerts_per_type=500,
         busy_names=0.5, planted=(plant,),
@@ -24,8 +24,8 @@ def parts(tmp_path_factory):
     last, first = split_sessions(inputs)
     early = discovery_slice(inputs.panel, last)
     late = holdout_slice(inputs.panel, first, inputs.panel.n_sessions - 1)
-    combo = tuple(inputs.panel.type_names.index(name) for name in ("t00", "t01"))
-    return early, late, inputs.calendar.dates, [ChosenRule("upset", "all", None, combo, 0.5)], study
+    rule = ChosenRule("upset", "all", None, (0, 1), 0.5)
+    return early, late, inputs.calendar.dates, [rule], study
 
 
 def test_each_classifier_triggers_as_often_as_the_rules(parts):
