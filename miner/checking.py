@@ -67,7 +67,7 @@ def check(
     last, first = split_sessions(inputs)
     panel, calendar = inputs.panel, inputs.calendar
     progress("counting combinations")
-    early = cases_of(discovery_slice(panel, last), inputs.targets, study, n_workers)
+    early = cases_of(discovery_slice(panel, last), inputs.targets, study, n_workers=n_workers)
     late = _holdout_cases(inputs, first)
     family = sum(len(case.unit.triggers.combos) for case in early)
     record = {

@@ -80,7 +80,7 @@ def find(
         is_proposed = np.array([combo in proposals for combo in combos], dtype=bool)
         n_proposed = len(proposals)
     else:
-        is_proposed = count_windows(is_seen_vk, combos) >= min_hits
+        is_proposed = count_windows(is_seen_vk, case.unit.triggers.combo_ck) >= min_hits
         n_proposed = int(is_proposed.sum())
     table = case.unit.triggers
     margins = fit_margins(

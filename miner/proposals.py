@@ -7,6 +7,7 @@ import warnings
 import numpy as np
 import pandas as pd
 
+from miner.kernels import bits, windows
 from miner.triggers import Combo
 
 
@@ -44,18 +45,11 @@ def propose(is_seen_vk: np.ndarray, min_hits: int, max_size: int) -> dict[Combo,
     }
 
 
-def count_windows(is_seen_vk: np.ndarray, combos: tuple[Combo, ...]) -> np.ndarray:
-    """Number of windows that hold each of the given combinations: int64 [combinations].
+def count_windows(is_seen_vk: np.ndarray, combo_ck: np.ndarray) -> np.ndarray:
+    """Number of windows that hold each combination (``TriggerTable.combo_ck``): int64.
 
     The same counts as ``propose`` for combinations known beforehand, on packed bits; drawn worlds
     use it, where only members of the family can matter.
     """
-    packed_kw = np.packbits(is_seen_vk.T, axis=1)
-    counts = np.zeros(len(combos), dtype=np.int64)
-    shared: dict[Combo, np.ndarray] = {}
-    for c, combo in enumerate(combos):
-        head = combo[:-1]
-        if head not in shared:
-            shared[head] = np.bitwise_and.reduce(packed_kw[list(head)], axis=0, initial=255)
-        counts[c] = np.bitwise_count(shared[head] & packed_kw[combo[-1]]).sum()
-    return counts
+    seen_kw = bits.pack_flags(np.ascontiguousarray(is_seen_vk.T))
+    return windows.count_together(seen_kw, combo_ck)

@@ -1,4 +1,5 @@
-"""The input tables as arrays: alerts and events as a `Log`, groups and coverage as a `SpanTable`.
+"""The input tables as arrays: alerts and events as a `Log`, groups and coverage as a `SpanTable`,
+prices as a `PriceTable`.
 
 The only reader of a study's tables. Names become integer codes into sorted names, so the result
 does not depend on the order of rows; times become UTC microseconds. Rows that cannot be read stop
@@ -28,10 +29,12 @@ __all__ = [
     "OPEN_END",
     "OPEN_START",
     "Log",
+    "PriceTable",
     "SpanTable",
     "read_coverage",
     "read_groups",
     "read_log",
+    "read_prices",
 ]
 
 
@@ -122,6 +125,31 @@ class SpanTable:
         return len(self.entity_code)
 
 
+ROUNDING = 1e-6  # bars multiplied by an adjustment: their high may fall below by rounding
+PRICE_COLUMNS = ("open", "high", "low", "close", "volume")
+
+
+@dataclass(frozen=True)
+class PriceTable:
+    """Daily bars, n rows in file order.
+
+    entity_code: int32 [n], positions in `entity_names` (sorted).
+    date: datetime64[D] [n], the local date. values: float64 [n] by column of PRICE_COLUMNS that the
+        table has, NaN where a field is empty; closes are always there and above zero.
+    """
+
+    entity_code: np.ndarray
+    entity_names: tuple[str, ...]
+    date: np.ndarray
+    values: dict[str, np.ndarray]
+    rows_read: int
+    set_aside: pd.DataFrame
+    fingerprints: dict[str, str]
+
+    def __len__(self) -> int:
+        return len(self.entity_code)
+
+
 def read_log(
     study: Study, table: Literal["alerts", "events"], progress: Progress | None = None
 ) -> Log:
@@ -186,6 +214,54 @@ def read_coverage(study: Study) -> SpanTable | None:
     if study.coverage is None:
         return None
     return _read_spans(study, study.coverage, "coverage", ("type",), ("type",))
+
+
+def read_prices(study: Study, progress: Progress | None = None) -> PriceTable | None:
+    """Read the prices; None where the study has none.
+
+    A row whose close is no number above zero, whose other prices are given but not above zero, or
+    whose high and low do not hold its open and close, is one that cannot be read.
+
+    Raises as `read_log` does.
+    """
+    if study.prices is None:
+        return None
+    optional = tuple(name for name in PRICE_COLUMNS if name != "close")
+    wanted = Wanted("prices", ("entity",), ("date",), optional, study.prices.columns, PRICE_COLUMNS)
+    reader = TableReader(study, study.prices, wanted, may_be_empty=())
+    seen: set[str] = set()
+    for chunk in reader.chunks(progress):
+        stamps = reader.stamps(chunk, "date")
+        read = {name: reader.numbers(chunk, name) for name in PRICE_COLUMNS}
+        value = {name: column.values for name, column in read.items()}
+        seen |= {name for name, column in read.items() if column.is_given.any()}
+        faults = [("date", ~stamps.is_ok, "is no date")]
+        for name, column in read.items():
+            is_needed = column.is_given | (name == "close")
+            is_wrong = is_needed & ~column.is_ok
+            faults.append((name, is_wrong, "is no number"))
+            is_low = column.values < 0 if name == "volume" else column.values <= 0
+            reason = "is below zero" if name == "volume" else "is not above zero"
+            faults.append((name, is_low, reason))
+        highest, lowest = (
+            np.fmax(value["open"], value["close"]),
+            np.fmin(value["open"], value["close"]),
+        )
+        faults.append(("high", value["high"] < highest * (1 - ROUNDING), "is below open or close"))
+        faults.append(("low", value["low"] > lowest * (1 + ROUNDING), "is above open or close"))
+        local = to_local(stamps.utc_us, reader.zone) // DAY_US
+        reader.keep(chunk, reader.codes(chunk), faults, day=local, **value)
+    reader.finish()
+    entity_code, entity_names = reader.names("entity")
+    return PriceTable(
+        entity_code=entity_code,
+        entity_names=entity_names,
+        date=reader.column("day").astype("M8[D]"),
+        values={name: reader.column(name) for name in PRICE_COLUMNS if name in seen | {"close"}},
+        rows_read=reader.rows_read,
+        set_aside=reader.bad.frame(),
+        fingerprints=reader.source.fingerprints,
+    )
 
 
 def _read_spans(

@@ -12,7 +12,7 @@ from miner.explain_away import Explanation, explain_away
 from miner.nulls.exchanges import Exchanger
 from miner.settings import Study
 from miner.time_split import DiscoverySlice
-from miner.triggers import find_family
+from miner.triggers import TriggerTable, find_family
 from miner.units import Case, make_case, make_unit, stratum_codes
 from miner.workers import Progress, silent
 
@@ -45,15 +45,15 @@ class Search:
         return chosen
 
 
-def cases_of(
-    segment: DiscoverySlice, targets: Sequence[str], study: Study, n_workers: int = 1
-) -> list[Case]:
-    """Every target in every stratum, with the family of each stratum."""
+Families = dict[str, TriggerTable]
+
+
+def families_of(segment: DiscoverySlice, study: Study, n_workers: int = 1) -> Families:
+    """The family of each stratum, with its triggers."""
     windows, mining = study.windows, study.mining
-    codes = stratum_codes(segment.panel, study.groups is not None and study.groups.pooled)
-    families = find_family(
+    return find_family(
         segment,
-        codes,
+        _codes(segment, study),
         lookback=windows.lookback,
         horizon=windows.horizon,
         rest=windows.rest,
@@ -61,17 +61,24 @@ def cases_of(
         min_triggers=mining.min_triggers,
         n_workers=n_workers,
     )
+
+
+def _codes(segment: DiscoverySlice, study: Study) -> dict[str, int | None]:
+    return stratum_codes(segment.panel, study.groups is not None and study.groups.pooled)
+
+
+def cases_of(
+    segment: DiscoverySlice,
+    targets: Sequence[str],
+    study: Study,
+    families: Families | None = None,
+    n_workers: int = 1,
+) -> list[Case]:
+    """Every target in every stratum, with the family of each stratum."""
+    families = families or families_of(segment, study, n_workers)
     units = [
-        make_unit(
-            segment,
-            name,
-            code,
-            families[name],
-            lookback=windows.lookback,
-            horizon=windows.horizon,
-            rest=windows.rest,
-        )
-        for name, code in codes.items()
+        make_unit(segment, name, code, families[name], **study.windows.model_dump())
+        for name, code in _codes(segment, study).items()
     ]
     return [
         make_case(target, unit, segment.panel.events[target])
@@ -86,6 +93,7 @@ def search(
     study: Study,
     *,
     with_draws: bool = True,
+    families: Families | None = None,
     progress: Progress = silent,
     n_workers: int = 1,
 ) -> Search:
@@ -95,10 +103,11 @@ def search(
     ----------
     with_draws : draw exchanged worlds, so that westfall-young can be shown beside the chosen
         adjustment (always done where it is the chosen one)
+    families : of the segment, if they are already at hand
     """
     mining, testing = study.mining, study.testing
     progress("triggers of every combination")
-    cases = cases_of(segment, targets, study, n_workers)
+    cases = cases_of(segment, targets, study, families, n_workers)
     progress("hits against the margins null")
     found = [
         find(case, min_hits=mining.min_hits, max_size=mining.max_size, n_workers=n_workers)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -46,6 +47,26 @@ class TriggerTable:
     def trigger_combo(self) -> np.ndarray:
         """Row of ``combos`` of every trigger."""
         return np.repeat(np.arange(len(self.combos)), self.count_c)
+
+    @cached_property
+    def combo_ck(self) -> np.ndarray:
+        """The combinations' types, padded with -1: int64 [combinations, largest size]."""
+        size = max(map(len, self.combos), default=1)
+        padded = [combo + (-1,) * (size - len(combo)) for combo in self.combos]
+        return np.array(padded, dtype=np.int64).reshape(-1, size)
+
+    def until(self, stop_t: int, min_triggers: int) -> TriggerTable:
+        """The table as it stood before session ``stop_t``: what had enough triggers by then."""
+        is_before = self.session < stop_t
+        count_c = np.add.reduceat(np.append(is_before, False), self.offset_c[:-1], dtype=np.int64)
+        is_kept_c = count_c >= max(min_triggers, 1)
+        is_kept = is_before & np.repeat(is_kept_c, self.count_c)
+        return TriggerTable(
+            tuple(combo for combo, kept in zip(self.combos, is_kept_c, strict=True) if kept),
+            np.concatenate([[0], np.cumsum(count_c[is_kept_c])]).astype(np.int64),
+            self.entity[is_kept],
+            self.session[is_kept],
+        )
 
 
 def _rows(combos: Sequence[Combo]) -> tuple[np.ndarray, np.ndarray]:

@@ -9,7 +9,7 @@ import numpy as np
 
 from miner.judged import judge_rules
 from miner.panel import Panel
-from miner.search import search
+from miner.search import families_of, search
 from miner.settings import Study
 from miner.time_split import discovery_slice, holdout_slice
 from miner.triggers import Combo
@@ -62,11 +62,21 @@ def walk_forward(
     windows = study.windows
     shortest = 2 * (windows.lookback + windows.horizon)
     parts = folds(panel.n_sessions, study.holdout.folds, study.holdout.embargo, shortest)
+    if not parts:
+        return [], []
+    # a trigger depends on nothing after it, so the last fold's triggers serve the earlier ones
+    latest = families_of(discovery_slice(panel, parts[-1][0]), study, n_workers)
     rows = []
     for number, (until, first, last) in enumerate(parts, start=1):
         early = discovery_slice(panel, until)
         late = holdout_slice(panel, first, last)
-        rules = search(early, targets, study, with_draws=False, n_workers=n_workers).chosen()
+        families = {
+            name: table.until(until - windows.horizon + 1, study.mining.min_triggers)
+            for name, table in latest.items()
+        }
+        rules = search(
+            early, targets, study, with_draws=False, families=families, n_workers=n_workers
+        ).chosen()
         judged = judge_rules(
             late,
             rules,

@@ -14,7 +14,8 @@ from miner.columns import CONFIRMED
 from miner.evidence.lead_times import events_caught, months_judged
 from miner.evidence.profiles import EventRates, Profile, event_rates, profile
 from miner.evidence.records import Disagreement, Evidence, Load
-from miner.evidence.rule_facts import RuleFacts, in_stratum, parts_of, rule_facts, within
+from miner.evidence.rule_facts import RuleFacts, parts_of, rule_facts
+from miner.evidence.tables import in_stratum, with_rows, within
 from miner.evidence.together import together
 from miner.holdout import Outcome
 from miner.judged import Judged, judge_rules
@@ -22,7 +23,7 @@ from miner.panel import Panel
 from miner.search import Search
 from miner.settings import Study
 from miner.time_split import Segment, holdout_slice
-from miner.triggers import Combo, TriggerTable, find_triggers
+from miner.triggers import TriggerTable, find_triggers
 from miner.units import Case, make_case, make_unit
 
 
@@ -61,7 +62,7 @@ def gather(
     )
     is_judged = every.session <= last - study.windows.horizon
     whole = within(every, is_judged)
-    singles = _rows(whole, range(n_types))
+    singles = with_rows(whole, [whole.combos.index((k,)) for k in range(n_types)])
 
     cases = {target: _whole_case(panel, target, None, "", singles, windows) for target in targets}
     profiles = {}
@@ -74,13 +75,14 @@ def gather(
         for k, made in enumerate(workers.in_order(one, range(n_types), n_workers)):
             profiles[target, k] = made
 
+    of_rules = with_rows(whole, [whole.combos.index(combo) for combo in sorted(combos)])
     units = {
         key: _whole_case(
             panel,
             key[0],
             key[2],
             key[1],
-            in_stratum(_rows(whole, _places(whole, combos)), panel, key[2]),
+            in_stratum(of_rules, panel, key[2]),
             windows,
         )
         for key in dict.fromkeys((rule.target, rule.stratum, rule.code) for rule in rules)
@@ -132,7 +134,7 @@ def _facts(
                 event_rates(found.found[place].case, n_workers),
                 event_rates(judged[i][0].case, n_workers),
             )
-        own = in_stratum(_rows(every, _places(every, {rule.combo})), panel, rule.code)
+        own = in_stratum(with_rows(every, [every.combos.index(rule.combo)]), panel, rule.code)
         facts[i] = rule_facts(
             found,
             place,
@@ -158,22 +160,6 @@ def _whole_case(
     segment = Segment(panel, 0, panel.n_sessions - 1)
     unit = make_unit(segment, stratum, code, table, **windows)
     return make_case(target, unit, panel.events[target])
-
-
-def _places(table: TriggerTable, combos: set[Combo]) -> list[int]:
-    return [row for row, combo in enumerate(table.combos) if combo in combos]
-
-
-def _rows(table: TriggerTable, rows: Sequence[int]) -> TriggerTable:
-    """Some rows of a table, in their order there."""
-    parts = [slice(table.offset_c[row], table.offset_c[row + 1]) for row in rows]
-    empty = np.empty(0, dtype=np.int32)
-    return TriggerTable(
-        tuple(table.combos[row] for row in rows),
-        np.concatenate([[0], np.cumsum(table.count_c[list(rows)], dtype=np.int64)]),
-        np.concatenate([empty, *(table.entity[part] for part in parts)]),
-        np.concatenate([empty, *(table.session[part] for part in parts)]),
-    )
 
 
 def _loads(

@@ -32,9 +32,7 @@ def events_caught(case: Case, rows: list[int]) -> np.ndarray:
     is_caught = np.zeros(case.events[0].size, dtype=bool)
     for row in rows:
         entity, session = case.unit.triggers.of(row)
-        is_caught |= kernels.has_trigger_before(
-            *case.events, entity, session, case.unit.horizon
-        )
+        is_caught |= kernels.has_trigger_before(*case.events, entity, session, case.unit.horizon)
     return is_caught
 
 

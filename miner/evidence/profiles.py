@@ -82,7 +82,9 @@ def profile(rates: EventRates, entity: np.ndarray, session: np.ndarray, horizon:
     n, events, mean, variance, third = kernels.around(
         entity, session, rates.is_event_et, rates.rate_et, -REACH, REACH
     )
-    low, high = kernels.band(entity, session, rates.rate_et, -REACH, REACH, LEVELS)
+    low, high = kernels.band(
+        entity, session, rates.rate_et, -REACH, n, mean, variance, third, LEVELS
+    )
 
     def total(first: int, last: int) -> tuple[int, float, float]:
         part = slice(REACH + first, REACH + last + 1)

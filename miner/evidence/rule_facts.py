@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -12,6 +11,7 @@ from miner.evidence.arrivals import Arrivals, arrivals
 from miner.evidence.hits_null import HitsNull, hits_null
 from miner.evidence.lead_times import lead_times, months_judged, share_caught
 from miner.evidence.profiles import EventRates, Profile, profile
+from miner.evidence.tables import in_stratum, part_of
 from miner.intervals import precision_intervals
 from miner.judged import Judged
 from miner.kernels import hits as hit_kernels
@@ -22,20 +22,6 @@ from miner.triggers import Combo, TriggerTable
 from miner.units import Case
 
 LATEST = 20
-
-
-def within(table: TriggerTable, is_kept: np.ndarray) -> TriggerTable:
-    """The triggers of a table for which ``is_kept`` (bool, one a trigger), every row kept."""
-    count_c = np.bincount(table.trigger_combo[is_kept], minlength=len(table.combos))
-    offset_c = np.concatenate([[0], np.cumsum(count_c, dtype=np.int64)])
-    return TriggerTable(table.combos, offset_c, table.entity[is_kept], table.session[is_kept])
-
-
-def in_stratum(table: TriggerTable, panel: Panel, code: int | None) -> TriggerTable:
-    """The triggers of a table in one stratum (``code`` in ``panel.strata``, None: all)."""
-    if code is None or panel.strata is None:
-        return table
-    return within(table, panel.strata.code_et[table.entity, table.session] == code)
 
 
 def parts_of(combo: Combo) -> list[Combo]:
@@ -112,9 +98,7 @@ def parts_in_discovery(
     interval = precision_intervals(own, rows, is_hit, f.case.unit.horizon, panel.n_sessions)
     return tuple(
         Part(own.combos[row], int(n[i]), int(hits[i]), float(expected[i]), float(low), float(high))
-        for i, (row, low, high) in enumerate(
-            zip(rows, interval.low, interval.high, strict=True)
-        )
+        for i, (row, low, high) in enumerate(zip(rows, interval.low, interval.high, strict=True))
     )
 
 
@@ -124,7 +108,7 @@ def by_stratum(
     """The rule's combination in every stratum hunted for its target, without "all"."""
     target = found.found[place].case.target
     late, row = judged
-    late_part = _part(late.case.unit.triggers, row)
+    late_part = part_of(late.case.unit.triggers, row)
     entity, session = late.case.unit.triggers.of(row)
     labels = late.case.unit.segment.panel.strata
     strata = []
@@ -182,14 +166,14 @@ def rule_facts(
     """
     f = found.found[place]
     table = f.case.unit.triggers
-    part = _part(table, table.combos.index(combo))
+    part = part_of(table, table.combos.index(combo))
     late, row = judged
     late_table = late.case.unit.triggers
-    late_part = _part(late_table, row)
+    late_part = part_of(late_table, row)
     horizon = whole.unit.horizon
     whole_row = whole.unit.triggers.combos.index(combo)
     panel = whole.unit.segment.panel
-    whole_part = _part(whole.unit.triggers, whole_row)
+    whole_part = part_of(whole.unit.triggers, whole_row)
     return RuleFacts(
         hits_null(f.rates[part], int(f.case.is_hit[part].sum())),
         hits_null(late.rates[late_part], int(late.case.is_hit[late_part].sum())),
@@ -213,12 +197,3 @@ def rule_facts(
             panel, *every.of(every.combos.index(combo)), whole.target, whole.unit.horizon
         ),
     )
-
-
-def _part(table: TriggerTable, row: int) -> slice:
-    return slice(table.offset_c[row], table.offset_c[row + 1])
-
-
-def names_of(panel: Panel, combos: Sequence[Combo]) -> list[list[str]]:
-    """Type names of combinations."""
-    return [[panel.type_names[k] for k in combo] for combo in combos]

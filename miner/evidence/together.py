@@ -13,12 +13,15 @@ from dataclasses import dataclass
 import numpy as np
 
 from miner import workers
+from miner.evidence.tables import within
 from miner.kernels import bits
 from miner.kernels import hits as hit_kernels
 from miner.kernels import triggers as trigger_kernels
 from miner.nulls.margins import fit_margins
 from miner.panel import Panel
 from miner.triggers import TriggerTable
+
+MOST_ARRIVALS = 100_000
 
 
 @dataclass(frozen=True)
@@ -55,9 +58,10 @@ def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int 
     """Co-occurrence of all types.
 
     ``singles`` holds the triggers of each type alone, in order of type, wherever its own type is
-    covered.
+    covered. Of a type with more than 100,000 every so many-th is looked at.
     """
     n_types = len(panel.type_names)
+    singles = _thinned(singles)
     entity, session, offset_c = singles.entity, singles.session, singles.offset_c
     every_row = np.arange(n_types)
 
@@ -79,6 +83,14 @@ def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int 
     for part in parts[2:]:
         np.fill_diagonal(part, np.nan)
     return Together(*parts)
+
+
+def _thinned(table: TriggerTable) -> TriggerTable:
+    """At most ``MOST_ARRIVALS`` triggers of each combination, evenly taken."""
+    step_c = -(-table.count_c // MOST_ARRIVALS)
+    place = np.arange(table.entity.size) - np.repeat(table.offset_c[:-1], table.count_c)
+    is_kept = place % np.repeat(np.maximum(step_c, 1), table.count_c) == 0
+    return within(table, is_kept)
 
 
 def _kept_on(alert_ew: np.ndarray, lookback: int) -> np.ndarray:

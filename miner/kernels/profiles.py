@@ -130,26 +130,15 @@ def least_reaching(level, mean, variance, third, n):
 def quantiles(q, levels):
     """Smallest x with P(X <= x) >= level, for each level, rising: int64 [levels].
 
-    X is the sum of Bernoulli(q[i]). Summed exactly where the variance is small, else by
-    ``refined_normal``.
+    X is the sum of Bernoulli(q[i]). Every probability is summed exactly.
     """
-    mean = variance = third = 0.0
-    for i in range(q.size):
-        v = q[i] * (1.0 - q[i])
-        mean += q[i]
-        variance += v
-        third += v * (1.0 - 2.0 * q[i])
-    found = np.empty(levels.size, dtype=np.int64)
-    if variance >= FINE_VARIANCE:
-        for i in range(levels.size):
-            found[i] = least_reaching(levels[i], mean, variance, third, q.size)
-        return found
-    n_sure = 0
-    for i in range(q.size):
-        n_sure += q[i] >= 1.0
+    n_sure = np.sum(q >= 1.0)
     open_q = q[(q > 0.0) & (q < 1.0)]
-    top = min(open_q.size, int(mean - n_sure + 12.0 * math.sqrt(variance) + 20.0))
+    mean = np.sum(open_q)
+    spread = math.sqrt(np.sum(open_q * (1.0 - open_q)))
+    top = min(open_q.size, int(mean + 12.0 * spread + 20.0))
     p_x, _ = few_states(open_q, top + 1)
+    found = np.empty(levels.size, dtype=np.int64)
     x = 0
     total = p_x[0]
     for i in range(levels.size):
@@ -161,13 +150,22 @@ def quantiles(q, levels):
 
 
 @kernel
-def band(entity, session, rate_et, first_offset, last_offset, levels):
-    """Quantiles of the number of events at each offset: int64 [levels, offsets]."""
-    n_offsets = last_offset - first_offset + 1
-    found = np.empty((levels.size, n_offsets), dtype=np.int64)
-    for d in range(n_offsets):
-        q = rates_from(entity, session, rate_et, first_offset + d, first_offset + d)
-        found[:, d] = quantiles(q, levels)
+def band(entity, session, rate_et, first_offset, n_d, mean_d, variance_d, third_d, levels):
+    """Quantiles of the number of events at each offset: int64 [levels, offsets].
+
+    ``n_d, mean_d, variance_d, third_d`` are those of ``around``. Exact where the variance is small, else
+    by ``refined_normal``.
+    """
+    found = np.zeros((levels.size, n_d.size), dtype=np.int64)
+    for d in range(n_d.size):
+        if variance_d[d] >= FINE_VARIANCE:
+            for i in range(levels.size):
+                found[i, d] = least_reaching(
+                    levels[i], mean_d[d], variance_d[d], third_d[d], n_d[d]
+                )
+        elif n_d[d] > 0:
+            offset = first_offset + d
+            found[:, d] = quantiles(rates_from(entity, session, rate_et, offset, offset), levels)
     return found
 
 

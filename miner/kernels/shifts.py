@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from miner.kernels.compiling import kernel
-from miner.kernels.tails import TINY
+from miner.kernels.tails import TINY, few_states
 
 
 @kernel
@@ -38,6 +38,7 @@ def shift_p_values(
     touched = np.empty(n_sessions, dtype=np.int32)
     place_w = np.empty(n_sessions, dtype=np.int32)
     share_h = np.zeros(n_sessions + 1)
+    share_1 = np.empty(life_e.size)
     for i in range(row.size):
         if hits[i] == 0:
             continue
@@ -48,6 +49,7 @@ def shift_p_values(
         tail = 0.0
         high = 0
         j, last = offset_c[row[i]], offset_c[row[i] + 1]
+        n_lone = 0
         while j < last:
             e = entity[j]
             stop = j + 1
@@ -58,6 +60,11 @@ def shift_p_values(
                 length = 0
                 for m in range(life_e[e], life_e[e + 1]):
                     length += life_stop[m] - life_start[m]
+            if n_windows > 0 and stop == j + 1:
+                # a lone trigger meets each window on one shift: a simple trial, kept for the end
+                share_1[n_lone] = n_windows / length
+                n_lone += 1
+            elif n_windows > 0:
                 m = life_e[e]
                 before = 0  # cells of the circle in earlier runs
                 for w in range(n_windows):
@@ -108,5 +115,12 @@ def shift_p_values(
                 now, after = after, now
                 high = top
             j = stop
+        if n_lone > 0:
+            lone_x, lone_tail = few_states(share_1[:n_lone], least)
+            # P(others = x) P(lone >= least - x), from the top so that the lone tail only grows
+            tail += lone_tail * now[0]
+            for x in range(1, high + 1):
+                lone_tail += lone_x[least - x]
+                tail += lone_tail * now[x]
         p[i] = max(TINY, min(1.0, tail))
     return p

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from miner.kernels.bits import any_in_range
+from miner.kernels.bits import any_in_range, popcount
 from miner.kernels.compiling import kernel
 
 
@@ -72,3 +72,21 @@ def spaced(rank_et, below, rest):
                 entity[n], session[n] = e, t
                 n += 1
     return entity, session
+
+
+@kernel
+def count_together(seen_kw, combo_ck):
+    """Windows in which every type of a combination is seen: int64 [combinations].
+
+    ``seen_kw`` uint64 [types, words], one bit a window; ``combo_ck`` int64, padded with -1.
+    """
+    n_combos, size = combo_ck.shape
+    count_c = np.zeros(n_combos, dtype=np.int64)
+    for c in range(n_combos):
+        for w in range(seen_kw.shape[1]):
+            word = seen_kw[combo_ck[c, 0], w]
+            for d in range(1, size):
+                if combo_ck[c, d] >= 0:
+                    word &= seen_kw[combo_ck[c, d], w]
+            count_c[c] += np.int64(popcount(word))
+    return count_c

@@ -72,7 +72,7 @@ def read_query(
                 rows_hash.add(rows)
                 yield {
                     column: _as_text(
-                        [row[k] for row in rows], matched[column], column in wanted.times, label
+                        [row[k] for row in rows], matched[column], column not in wanted.names, label
                     )
                     for column, k in at.items()
                 }
@@ -99,9 +99,9 @@ def _located(url: Any, folder: Path, label: str) -> Any:
     return url.set(database=str(path))
 
 
-def _as_text(values: Sequence[Any], column: str, is_time: bool, label: str) -> pa.Array:
-    """Return a column as text. A time that is no time becomes text that is refused later."""
-    plain: Callable[[Any], str | None] = _time_text if is_time else _name_text
+def _as_text(values: Sequence[Any], column: str, is_value: bool, label: str) -> pa.Array:
+    """Return a column as text. A time or number that is none becomes text, refused later."""
+    plain: Callable[[Any], str | None] = _time_text if is_value else _name_text
     try:
         return pa.array([v if type(v) is str else plain(v) for v in values], pa.string())
     except TypeError as error:

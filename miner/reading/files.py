@@ -59,7 +59,8 @@ def _read_csv(path: Path, label: str, wanted: Wanted) -> Iterator[Columns]:
     matched = match_columns(header, wanted, label)
     ragged = _RaggedRows(label)
     kinds = {matched[c]: _NAME_TYPE for c in wanted.names if c in matched}
-    kinds |= {matched[c]: pa.string() for c in wanted.times if c in matched}
+    texts = wanted.times + wanted.numbers
+    kinds |= {matched[c]: pa.string() for c in texts if c in matched}
     with pa_csv.open_csv(
         str(path),
         # one thread: with more, the numbers of ragged rows are not known

@@ -11,6 +11,7 @@ import pyarrow as pa
 
 from ..errors import TableError, explain
 from .names import is_name_type
+from .numbers import is_number_type
 from .stamps import is_time_type
 
 
@@ -26,11 +27,12 @@ class Wanted:
     times: tuple[str, ...]
     optional: tuple[str, ...] = ()
     renamed: Mapping[str, str] = field(default_factory=dict)
+    numbers: tuple[str, ...] = ()
 
     @property
     def columns(self) -> tuple[str, ...]:
         """Every wanted column, names first."""
-        return self.names + self.times
+        return self.names + self.times + self.numbers
 
     def in_file(self, column: str) -> str:
         """Return a column's name in the file."""
@@ -71,13 +73,15 @@ def match_columns(header: Sequence[str], wanted: Wanted, where: str) -> dict[str
 def check_types(
     kinds: Mapping[str, pa.DataType], matched: Mapping[str, str], wanted: Wanted, where: str
 ) -> None:
-    """Check that names are text or whole numbers, and times are text, dates or timestamps.
+    """Check that names are text or whole numbers, times are text, dates or timestamps, and
+    numbers are numbers or text.
 
     `kinds` is by name in the file. Raises `TableError`, all wrong columns at once.
     """
     rules: tuple[tuple[tuple[str, ...], Callable[[pa.DataType], bool], str], ...] = (
         (wanted.names, is_name_type, "hold text or whole numbers"),
         (wanted.times, is_time_type, "hold dates, timestamps or ISO 8601 text"),
+        (wanted.numbers, is_number_type, "hold numbers"),
     )
     problems = [
         explain(where, f"column {matched[column]}", rule, str(kinds[matched[column]]))

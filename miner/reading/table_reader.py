@@ -14,6 +14,7 @@ from ..settings import Study, TableSettings
 from .bad_rows import BadRows, Fault
 from .headers import Wanted
 from .names import NameCoder, fault_of_name
+from .numbers import Numbers, read_numbers
 from .sources import Chunk, Source
 from .stamps import Stamps, read_stamps
 from .zones import timezone_name
@@ -27,7 +28,7 @@ def _always(reason: str) -> Callable[[str | None], str]:
 
 
 class TableReader:
-    """One pass over a table: for each chunk `codes`, `stamps`, then `keep`; then `finish`."""
+    """One pass over a table: for each chunk `codes`, `stamps`, `numbers`, then `keep`; then `finish`."""
 
     def __init__(
         self, study: Study, settings: TableSettings, wanted: Wanted, may_be_empty: Iterable[str]
@@ -64,6 +65,10 @@ class TableReader:
         """Return a column of times."""
         return self._readable(lambda values: read_stamps(values, self.zone), chunk, column)
 
+    def numbers(self, chunk: Chunk, column: str) -> Numbers:
+        """Return a column of numbers."""
+        return self._readable(read_numbers, chunk, column)
+
     def _readable(self, read: Callable[[pa.Array], T], chunk: Chunk, column: str) -> T:
         try:
             return read(chunk.columns[column])
@@ -81,7 +86,7 @@ class TableReader:
     ) -> None:
         """Keep the chunk's good rows of `codes` and `columns`; note the others.
 
-        faults: column of times, is_bad [n], and the reason to give for it.
+        faults: column of times or numbers, is_bad [n], and the reason to give for it.
         """
         found = [
             Fault(self.wanted.in_file(name), chunk.columns[name], code < 0, self._name_fault(name))

@@ -25,11 +25,28 @@ def interval_plot(rule: Row, high: float) -> Markup:
     plot = Plot((0, high), (0, 2), width=170, height=34, margin=(2, 4, 2, 4))
     plot.line([(0, 1), (high, 1)], "grid")
     halves = (
-        ("discovery", 1.5, rule["precision"], rule["precision_low"], rule["precision_high"],
-         rule["expected_hits"], rule["triggers"], rule["base_rate"], "early"),
-        ("holdout", 0.5, rule["holdout_precision"], rule["holdout_low"], rule["holdout_high"],
-         rule["holdout_expected_hits"], rule["holdout_triggers"], rule["holdout_base_rate"],
-         "late"),
+        (
+            "discovery",
+            1.5,
+            rule["precision"],
+            rule["precision_low"],
+            rule["precision_high"],
+            rule["expected_hits"],
+            rule["triggers"],
+            rule["base_rate"],
+            "early",
+        ),
+        (
+            "holdout",
+            0.5,
+            rule["holdout_precision"],
+            rule["holdout_low"],
+            rule["holdout_high"],
+            rule["holdout_expected_hits"],
+            rule["holdout_triggers"],
+            rule["holdout_base_rate"],
+            "late",
+        ),
     )
     told = []
     for name, y, share, low, top, expected, n, base, kind in halves:
@@ -122,7 +139,9 @@ def profile_plot(
             outside += 1
             plot.dot(x, y, "stray", 1.7 if small else 2.4)
     plot.x_axis([(x, f"{x:+d}" if x else "0") for x in range(-reach, reach + 1, reach // 2)])
-    peak = max((y, -abs(x), x) for x, y in zip(offsets, profile["rate"], strict=True) if y is not None)
+    peak = max(
+        (y, -abs(x), x) for x, y in zip(offsets, profile["rate"], strict=True) if y is not None
+    )
     before, after = profile["before"], profile["after"]
     return plot.done(
         f"{what} around {some(profile['triggers'], 'trigger')}: highest {percent(peak[0])} at "
@@ -152,8 +171,12 @@ def quarter_plot(quarters: Sequence[Row], holdout_quarter: str) -> Markup:
         plot.line([(x - 0.4, y), (x + 0.4, y)], "expectedline")
     most = max(q["triggers"] for q in quarters)
     for x, q in zip(at, quarters, strict=True):
-        plot.dot(x, q["precision"], "dot late" if x >= held else "dot early",
-                 1.8 + 3.4 * (q["triggers"] / most) ** 0.5)
+        plot.dot(
+            x,
+            q["precision"],
+            "dot late" if x >= held else "dot early",
+            1.8 + 3.4 * (q["triggers"] / most) ** 0.5,
+        )
     return plot.done(
         "Precision by quarter: "
         + "; ".join(
@@ -187,5 +210,8 @@ def bar(share: float) -> Markup:
     """One bar of the funnel, as long as ``share`` of the first."""
     plot = Plot((0, 1), (0, 1), width=300, height=14, margin=(0, 0, 0, 0))
     plot.box((0, max(share, 0.004)), (0, 1), "bar")
-    return Markup(str(plot.done("")).replace('role="img" ', 'aria-hidden="true" ').replace(
-        ' aria-label=""', ""))
+    return Markup(
+        str(plot.done(""))
+        .replace('role="img" ', 'aria-hidden="true" ')
+        .replace(' aria-label=""', "")
+    )

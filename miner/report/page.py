@@ -33,28 +33,32 @@ def page(run: Run) -> str:
     """The whole page."""
     style, script = _asset("report.css"), _asset("report.js")
     rules = [_rule(run, i) for i in range(len(run.rules))]
-    return _environment().get_template("report.html.j2").render(
-        run=run.record,
-        counts=run.record["counts"],
-        evidence=run.evidence,
-        style=Markup(style),
-        script=Markup(script),
-        policy=f"default-src 'none'; script-src '{_hash(script)}'; style-src '{_hash(style)}'; "
-        "base-uri 'none'; form-action 'none'",
-        rules=rules,
-        axis=charts.interval_axis(_highest(run.rules)),
-        by_verdict={
-            verdict: [rule for rule in rules if rule["row"]["verdict"] == verdict]
-            for verdict in (CONFIRMED, REFUTED, UNDERPOWERED)
-        },
-        several=_several(run),
-        distrust=list(_distrust(run, rules)),
-        types=_types(run),
-        matrix=_matrix(run),
-        funnel=list(_funnel(run)),
-        candidates=_candidates(run),
-        settings=list(_flat(run.record["settings"])),
-        cautions=words.CAUTIONS,
+    return (
+        _environment()
+        .get_template("report.html.j2")
+        .render(
+            run=run.record,
+            counts=run.record["counts"],
+            evidence=run.evidence,
+            style=Markup(style),
+            script=Markup(script),
+            policy=f"default-src 'none'; script-src '{_hash(script)}'; style-src '{_hash(style)}'; "
+            "base-uri 'none'; form-action 'none'",
+            rules=rules,
+            axis=charts.interval_axis(_highest(run.rules)),
+            by_verdict={
+                verdict: [rule for rule in rules if rule["row"]["verdict"] == verdict]
+                for verdict in (CONFIRMED, REFUTED, UNDERPOWERED)
+            },
+            several=_several(run),
+            distrust=list(_distrust(run, rules)),
+            types=_types(run),
+            matrix=_matrix(run),
+            funnel=list(_funnel(run)),
+            candidates=_candidates(run),
+            settings=list(_flat(run.record["settings"])),
+            cautions=words.CAUTIONS,
+        )
     )
 
 
@@ -91,9 +95,7 @@ def _highest(rules: list[Row]) -> float:
 def _several(run: Run) -> dict[str, bool]:
     """Whether the run has more than one target, and more than one stratum."""
     units = run.record["margins"]
-    return {
-        key: len({unit[key] for unit in units}) > 1 for key in ("target", "stratum")
-    }
+    return {key: len({unit[key] for unit in units}) > 1 for key in ("target", "stratum")}
 
 
 def _rule(run: Run, i: int) -> dict[str, Any]:
@@ -115,9 +117,7 @@ def _rule(run: Run, i: int) -> dict[str, Any]:
             (when, charts.null_plot(facts["null"][key], when))
             for key, when in (("discovery", "discovery"), ("holdout", "the holdout"))
         ],
-        "quarters": charts.quarter_plot(
-            quarters, f"{first[:4]}Q{(int(first[5:7]) + 2) // 3}"
-        )
+        "quarters": charts.quarter_plot(quarters, f"{first[:4]}Q{(int(first[5:7]) + 2) // 3}")
         if quarters
         else None,
         "profiles": [
@@ -161,7 +161,7 @@ def _distrust(run: Run, rules: list[dict[str, Any]]) -> Iterator[Markup]:
         ).format(
             words.some(apart["margins_only"], "combination"),
             "is" if apart["margins_only"] == 1 else "are",
-            words.percent(run.record["settings"]["testing"]["fdr"]),
+            words.level(run.record["settings"]["testing"]["fdr"]),
         )
     if apart["own_timing_only"]:
         yield Markup(
@@ -249,8 +249,12 @@ def _funnel(run: Run) -> Iterator[tuple[str, int, Markup, str]]:
     family = max(1, counts["family"])
     minimum = settings["mining"]["min_triggers"]
     lines = [
-        ("Family", counts["family"], f"combinations with at least {minimum} triggers, looked at "
-         "or not; every adjustment divides by this number"),
+        (
+            "Family",
+            counts["family"],
+            f"combinations with at least {minimum} triggers, looked at "
+            "or not; every adjustment divides by this number",
+        ),
         ("Proposed", counts["candidates"], "of them, seen often enough before events"),
     ]
     said = {
@@ -293,5 +297,3 @@ def _flat(settings: dict[str, Any], before: str = "") -> Iterator[tuple[str, str
             yield f"{before}{key}", ", ".join(map(str, value))
         elif value is not None:
             yield f"{before}{key}", str(value)
-
-

@@ -95,7 +95,9 @@ class Plot:
             f'<path class="axis" d="M{self.left} {foot}H{self.width - self.right}"/>'
         )
         for x, words in ticks:
-            self.text(self.px(x), foot + 13, words)
+            at, half = self.px(x), 3.3 * len(words)  # about half of what the words take
+            anchor = "start" if at < half else "end" if at > self.width - half else "middle"
+            self.text(at, foot + 13, words, anchor)
 
     def y_axis(self, ticks: Sequence[tuple[float, str]]) -> None:
         """Faint lines across, with words at their left."""

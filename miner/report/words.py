@@ -50,13 +50,23 @@ def number(x: float | None, digits: int = 1) -> str:
     return f"{x:,.0f}" if abs(x) >= 100 else f"{x:,.{digits}f}"
 
 
+def short(x: float | None) -> str:
+    """A number with no more digits than it has."""
+    return NOTHING if x is None else f"{x:.3g}"
+
+
+def level(share: float | None) -> str:
+    """A level or a share of few things, with no more digits than it has."""
+    return NOTHING if share is None else f"{100 * share:.3g}%"
+
+
 def some(n: int, one: str, many: str = "") -> str:
-    """"1 rule", "2 rules", "no rules"."""
+    """ "1 rule", "2 rules", "no rules"."""
     return f"{count(n) if n else 'no'} {one if n == 1 else many or one + 's'}"
 
 
 def listed(names: list[Any]) -> str:
-    """"a", "a and b", "a, b and c"."""
+    """ "a", "a and b", "a, b and c"."""
     words = [str(name) for name in names]
     return " and ".join([", ".join(words[:-1]), words[-1]]) if len(words) > 1 else "".join(words)
 
@@ -82,9 +92,11 @@ FILTERS = {
     "combination": combination,
     "count": count,
     "day": day,
+    "level": level,
     "listed": listed,
     "name": name,
     "number": number,
     "p": p_text,
     "percent": percent,
+    "short": short,
 }

@@ -51,7 +51,10 @@ def _write_sheet(sheet: Any, rows: list[Row], formats: dict[str, Any]) -> None:
         style = None
         if kind == "number":
             style = formats[
-                "share" if column in SHARES else "p" if "_value" in column or column == "p_own_timing"
+                "share"
+                if column in SHARES
+                else "p"
+                if "_value" in column or column == "p_own_timing"
                 else "number"
             ]
         width = max([len(column), *(len(str(row[column])) for row in rows if kind == "text")])

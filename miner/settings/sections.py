@@ -7,7 +7,7 @@ from typing import Annotated, Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
-from .values import Clock, Day, Name, Names, Share, Source, Zone, is_url, whole
+from .values import Clock, Day, Name, Names, Share, Source, Zone, is_url, number, whole
 
 Kind = Literal["weekdays", "daily", "dates", "exchange"]
 
@@ -55,6 +55,30 @@ class GroupSettings(TableSettings):
     def label_columns(self) -> tuple[str, ...]:
         """The label columns in use, each once."""
         return tuple(dict.fromkeys(c for c in (self.strata, self.peers) if c is not None))
+
+
+class PriceSettings(TableSettings):
+    """[prices]: which moves become targets, and what trades on rules would cost.
+
+    `jumps` says what a close at least 1.8 times, or at most 1/1.8 of, the one before is: "error"
+    stops, "break" starts the series anew there, "keep" takes it for real. `epsilon` and `threshold`
+    are in volatilities, the volatility is that of the `volatility_sessions` returns before.
+    A series with more than `largest_gap` sessions without a price starts anew after them.
+    `costs_bps` and `slippage_bps` are paid on each of entry and exit.
+    """
+
+    moves: Literal["extremes", "close-to-close", "off"] = "extremes"
+    epsilon: Annotated[float, number(0)] = 1.0
+    threshold: Annotated[float, number(0, is_above=True)] = 2.5
+    volatility_sessions: Annotated[int, whole(10)] = 60
+    largest_gap: Annotated[int, whole(0)] = 5
+    jumps: Literal["error", "break", "keep"] = "error"
+    benchmark: Literal["peers", "strata", "all"] = "peers"
+    directions: dict[str, Literal["long", "short"]] = Field(default_factory=dict)
+    exit: Literal["horizon", "event"] = "horizon"
+    costs_bps: Annotated[float, number(0)] = 5.0
+    slippage_bps: Annotated[float, number(0)] = 5.0
+    position: Annotated[float, number(0, is_above=True)] = 100_000.0
 
 
 def _kind(calendar: str) -> Kind:
@@ -133,7 +157,7 @@ SECTIONS: dict[str, type[Section]] = {
     "events": EventSettings,
     "groups": GroupSettings,
     "coverage": TableSettings,
-    "prices": TableSettings,
+    "prices": PriceSettings,
     "sessions": SessionSettings,
     "windows": WindowSettings,
     "mining": MiningSettings,

@@ -23,6 +23,7 @@ from .sections import (
     GroupSettings,
     HoldoutSettings,
     MiningSettings,
+    PriceSettings,
     Section,
     SessionSettings,
     TableSettings,
@@ -43,7 +44,7 @@ class Study:
     events: EventSettings
     groups: GroupSettings | None
     coverage: TableSettings | None
-    prices: TableSettings | None
+    prices: PriceSettings | None
     sessions: SessionSettings
     windows: WindowSettings
     mining: MiningSettings
@@ -147,6 +148,4 @@ def _warnings(study: Study) -> tuple[str, ...]:
         )
     if groups is not None and groups.pooled and groups.strata is None:
         found.append("[groups] pooled = true changes nothing without strata.")
-    if study.prices is not None:
-        found.append("[prices] is not used by the hunt.")
     return tuple(found)

@@ -82,6 +82,20 @@ def whole(low: int, high: int | None = None) -> BeforeValidator:
 _AS_NUMBER = "Write it as a plain number, without quotes."
 
 
+def number(low: float, *, is_above: bool = False) -> BeforeValidator:
+    """Return the check of a finite number of at least `low`, or with `is_above` above it."""
+    rule = f"be a number {'above' if is_above else 'of at least'} {low:g}"
+
+    def check(value: Any) -> float:
+        if type(value) not in (int, float):
+            raise broken(rule, _AS_NUMBER)
+        if not math.isfinite(value) or value < low or (is_above and value == low):
+            raise broken(rule)
+        return float(value)
+
+    return BeforeValidator(check)
+
+
 def _share(value: Any) -> float:
     rule = "be a number above 0 and below 1"
     if type(value) not in (int, float):

@@ -31,7 +31,7 @@ def _joint(is_full: bool) -> Tasks:
 
 
 def _power(is_full: bool) -> Tasks:
-    return power.tasks(50 if is_full else 1)
+    return power.tasks(60 if is_full else 1)
 
 
 def _intervals(is_full: bool) -> Tasks:

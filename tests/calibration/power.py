@@ -11,9 +11,9 @@ from tests.calibration.table import BY_NAME, NamedWorld
 from tests.worlds import Plant
 
 PAIR = (0, 1)
-# about 2.5 times the 5 % that the background gives, and clear of certainty
-PLANTED = Plant(PAIR, 0.08, 200)
-ENOUGH = (0.01, 0.001, 0.0001)
+# with what the background gives, about four times a base rate of 5 %
+PLANTED = Plant(PAIR, 0.15, 200)
+
 WORLDS = (
     "quiet",
     "season",

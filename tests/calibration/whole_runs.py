@@ -2,7 +2,8 @@
 
 Events of one entity closer than the horizon share part of their windows. Exchanging single events
 tears such runs apart, and the drawn worlds then hold more window cells than the observed one. Here
-whole runs of one peer group exchange their places instead.
+runs of equal length and peer group exchange their places instead, so that every entity keeps its
+number of window cells and every peer group its number on each session, exactly.
 """
 
 from __future__ import annotations
@@ -79,15 +80,10 @@ def count_run_hits(start_rv, length_v, entity_v, n_entities, n_sessions, offset_
 
 @dataclass(frozen=True)
 class RunExchanger:
-    """Worlds of a case in which whole runs of window cells exchange places.
-
-    ``alike``: only runs of equal length do, which holds the margins of windows exactly; else any
-    two of a peer group, which holds those of runs' first sessions, as single events' are held.
-    """
+    """Worlds of a case in which whole runs of window cells of equal length exchange places."""
 
     case: Case
     seed: int
-    alike: bool = True
 
     @cached_property
     def runs(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
@@ -102,8 +98,7 @@ class RunExchanger:
         """First sessions of the runs in each of ``n_draws`` draws of one chain."""
         entity, start, length, group = self.runs
         n_entities = self.case.unit.is_open_et.shape[0]
-        kind = group.astype(np.int64) * 100_000 + (length if self.alike else 0)
-        _, pool_v = np.unique(kind, return_inverse=True)
+        _, pool_v = np.unique(group.astype(np.int64) * 100_000 + length, return_inverse=True)
         random_nv = stream(self.seed, "whole runs").integers(
             0, 1 << 32, (BURN_IN + n_draws, entity.size), dtype=np.uint32
         )

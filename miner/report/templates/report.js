@@ -41,7 +41,7 @@
       const shown =
         wanted.every((word) => text.get(row).includes(word)) &&
         choices.every(
-          (choice) => !choice.value || row.cells[+choice.dataset.column].textContent.trim() === choice.value
+          (choice) => !choice.value || row.cells[+choice.dataset.column].textContent.trim() === choice.value.trim()
         );
       row.hidden = !shown;
       n += shown;
@@ -52,10 +52,10 @@
   for (const button of buttons) button.addEventListener("click", () => sort(button));
   find.addEventListener("input", filter);
   for (const choice of choices) choice.addEventListener("change", filter);
-  for (const link of document.querySelectorAll("a[data-find]")) {
+  for (const link of document.querySelectorAll("a[data-rule]")) {
     link.addEventListener("click", () => {
-      for (const choice of choices) choice.value = "";
-      find.value = link.dataset.find;
+      for (const choice of choices) choice.value = choice.id === "by-rule" ? link.dataset.rule : "";
+      find.value = "";
       filter();
     });
   }

@@ -1,0 +1,385 @@
+"""Makes a rule book from a run's folder and the tables the run read."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+
+from miner.assemble import Inputs, assemble
+from miner.columns import CONFIRMED, JOINER, REFUTED
+from miner.errors import InputError, SettingsError, TableError, explain
+from miner.evidence.lead_times import lead_times, share_caught, workload
+from miner.kernels import profiles
+from miner.rule_cases import RuleCase, combo_of, rule_cases, stratum_code
+from miner.settings import Study, load_study, study_from_dict
+from miner.time_split import Segment
+from miner.triggers import find_triggers
+from miner.workers import Progress, silent
+
+from .records import (
+    FORMAT,
+    BookRule,
+    Findings,
+    History,
+    Lead,
+    RuleBook,
+    RunOrigin,
+    Workload,
+    rule_id,
+)
+
+STATUS_OF_VERDICT = {CONFIRMED: "candidate", REFUTED: "retired"}  # else "watch"
+HISTORY_COLUMNS = ["rule", "entity", "session", "outcome"]
+PARENTS = 3
+
+
+@dataclass(frozen=True)
+class Made:
+    """A rule book, and the triggers so far of each of its rules: columns HISTORY_COLUMNS, where
+    ``outcome`` is "hit", "miss", or "open" for a horizon that reaches past the study."""
+
+    book: RuleBook
+    history: pd.DataFrame
+
+
+def rules_of(
+    run: str | Path,
+    study: Study | str | Path | None = None,
+    *,
+    book_folder: str | Path | None = None,
+    n_workers: int = 1,
+    progress: Progress = silent,
+) -> Made:
+    """The rules of a run as a rule book.
+
+    Confirmed rules begin as candidates, underpowered ones as watched, refuted ones as retired.
+
+    Parameters
+    ----------
+    run : the run's folder
+    study : its study; by default the settings in run.json, on tables found in one of the folders
+        above the run's
+    book_folder : where the book will be written: its paths are relative to it (default: the run's)
+
+    Raises
+    ------
+    InputError : the folder is no run, or its study's tables are gone or have changed since
+    """
+    run = Path(run)
+    record, table = read_run(run)
+    if study is None:
+        study = study_of_run(run, record)
+    elif not isinstance(study, Study):
+        study = load_study(study)
+    _check_settings(run, record, study)
+    inputs = assemble(study, progress)
+    _check_inputs(run, record, inputs)
+    progress("making the rule book")
+    panel = inputs.panel
+    windows = study.windows
+    keys = [
+        _Key(row["target"], row["stratum"], tuple(row["combination"].split(JOINER)),
+             windows.lookback, windows.horizon, windows.rest)
+        for row in table
+    ]  # fmt: skip
+    whole = Segment(panel, 0, panel.n_sessions - 1)
+    cases = rule_cases(whole, keys, n_workers=n_workers)
+    origin = _origin(run, record)
+    name = _run_name(origin, record)
+    rules = tuple(
+        _rule(key, row, step, case, inputs.calendar.dates, name)
+        for key, row, step, case in zip(keys, table, record["rules"], cases, strict=True)
+    )
+    folder = Path(book_folder) if book_folder is not None else run
+    book = RuleBook(
+        format=FORMAT,
+        sessions=_sessions(study, folder, str(inputs.calendar.dates[0])),
+        alerts={"columns": dict(study.alerts.columns)} if study.alerts.columns else {},
+        groups=None if study.groups is None else _section(study.groups, study, folder),
+        coverage=None if study.coverage is None else _section(study.coverage, study, folder),
+        history=None,
+        run={name: origin},
+        rule=rules,
+    )
+    return Made(book, _history(inputs, rules, n_workers))
+
+
+def write_history(made: Made, book_path: str | Path) -> RuleBook:
+    """Write the triggers so far beside the book, and return the book with a word of them."""
+    path = Path(book_path)
+    target = path.with_name(f"{path.stem}-history.csv")
+    path.parent.mkdir(parents=True, exist_ok=True)
+    made.history.to_csv(target, index=False, lineterminator="\n")
+    return made.book.model_copy(update={"history": History(source=target.name)})
+
+
+def carried_over(old: RuleBook, new: RuleBook) -> RuleBook:
+    """The new book with the statuses and notes people gave its rules in the old one.
+
+    Rules of the old book that the new run did not find stay as they are, at the end: that a rule
+    was not found again is no reason to drop a live one unseen.
+    """
+    known = old.by_id()
+    rules = [
+        rule.model_copy(update={"status": known[rule.id].status, "note": known[rule.id].note})
+        if rule.id in known
+        else rule
+        for rule in new.rule
+    ]
+    again = {rule.id for rule in rules}
+    rules += [rule for rule in old.rule if rule.id not in again]
+    used = {rule.run for rule in rules}
+    runs = {name: run for name, run in {**old.run, **new.run}.items() if name in used}
+    return new.model_copy(update={"rule": tuple(rules), "run": runs})
+
+
+def read_run(run: Path) -> tuple[dict[str, Any], list[dict[str, Any]]]:
+    """A run's record, and its rules table as rows; undefined values are None.
+
+    Raises
+    ------
+    TableError : the folder is not that of a run
+    """
+    try:
+        record = json.loads((run / "run.json").read_text(encoding="utf-8"))
+        text = {name: str for name in ("target", "stratum", "combination", "sharpens")}
+        table = pd.read_csv(run / "rules.csv", dtype=text, keep_default_na=False,
+                            na_values={c: [""] for c in _NUMBERS} | {"sharpens": [""]})  # fmt: skip
+        rows = [
+            {key: None if pd.isna(value) else value for key, value in row.items()}
+            for row in table.to_dict("records")
+        ]
+        if len(rows) != len(record["rules"]):
+            raise ValueError("run.json and rules.csv hold different rules")
+    except (OSError, ValueError, KeyError) as error:
+        found = (getattr(error, "strerror", None) or str(error)).splitlines()[0][:200]
+        raise TableError(
+            explain(str(run), "folder", "be that of a run", found, "Name what `miner hunt` wrote.")
+        ) from error
+    return record, rows
+
+
+_NUMBERS = (
+    "triggers hits precision precision_low precision_high base_rate expected_hits p_value q_value "
+    "p_own_timing holdout_triggers holdout_hits holdout_precision holdout_low holdout_high "
+    "holdout_base_rate holdout_expected_hits holdout_p_value"
+).split()
+
+
+def study_of_run(run: Path, record: Mapping[str, Any]) -> Study:
+    """The study of a run, from the settings in its record, where its tables still are.
+
+    Raises
+    ------
+    SettingsError : they are in none of the three folders above the run's
+    """
+    source = record["settings"]["alerts"]["source"]
+    for folder in list(run.resolve().parents)[:PARENTS]:
+        study = study_from_dict(record["settings"], folder)
+        if study.alerts.is_database:
+            break
+        if (folder / source).is_file() or any(folder.glob(source) if "*" in source else ()):
+            return study
+    raise SettingsError(
+        explain(
+            str(run),
+            "study",
+            "be found from its run",
+            f'no table "{source}" in the folders above the run\'s',
+            "Name the study's settings file (--study).",
+        )
+    )
+
+
+def _check_settings(run: Path, record: Mapping[str, Any], study: Study) -> None:
+    now = json.loads(json.dumps(study.as_dict()))
+    for section in ("sessions", "windows", "groups", "coverage", "events", "holdout", "prices"):
+        if now.get(section) != record["settings"].get(section):
+            raise SettingsError(
+                explain(
+                    str(run),
+                    f"[{section}]",
+                    "be the same in the study as in the run",
+                    "other settings",
+                    "Hunt again, or name the study as it was.",
+                )
+            )
+
+
+def _check_inputs(run: Path, record: Mapping[str, Any], inputs: Inputs) -> None:
+    changed = sorted(
+        path for path, sha in record["inputs"].items() if inputs.fingerprints.get(path) != sha
+    )
+    if changed:
+        raise TableError(
+            explain(
+                str(run),
+                ", ".join(changed),
+                "be what the run read",
+                "other contents (by SHA-256)",
+                "Hunt again on the tables as they are now.",
+            )
+        )
+
+
+@dataclass(frozen=True)
+class _Key:
+    target: str
+    stratum: str
+    combination: tuple[str, ...]
+    lookback: int
+    horizon: int
+    rest: int
+
+    @property
+    def id(self) -> str:
+        return rule_id(
+            self.target, self.stratum, self.combination, self.lookback, self.horizon, self.rest
+        )
+
+
+def _rule(
+    key: _Key,
+    row: Mapping[str, Any],
+    step: Mapping[str, Any],
+    case: RuleCase,
+    dates: np.ndarray,
+    run: str,
+) -> BookRule:
+    held = step["holdout"]
+    n = int(row["holdout_triggers"] or 0)
+    lead = lead_times(case.case, case.row)
+    quartiles = np.quantile(lead, [0.25, 0.5, 0.75]) if lead.size else None
+    caught = share_caught(case.case, case.row)
+    expected_hits = row["holdout_expected_hits"]
+    return BookRule(
+        id=key.id,
+        status=STATUS_OF_VERDICT.get(row["verdict"], "watch"),  # type: ignore[arg-type]
+        target=key.target,
+        stratum=key.stratum,
+        combination=key.combination,
+        lookback=key.lookback,
+        horizon=key.horizon,
+        rest=key.rest,
+        verdict=row["verdict"],
+        sharpens=row["sharpens"],
+        run=run,
+        precision=row["holdout_precision"],
+        precision_low=row["holdout_low"],
+        precision_high=row["holdout_high"],
+        expected=expected_hits / n if n and expected_hits is not None else None,
+        discovery=Findings(
+            triggers=int(row["triggers"]),
+            hits=int(row["hits"]),
+            **{
+                name: row[name]
+                for name in ("precision", "precision_low", "precision_high", "base_rate",
+                             "expected_hits", "p_value", "q_value", "p_own_timing")
+            },
+        ),
+        holdout=Findings(
+            triggers=n,
+            hits=int(row["holdout_hits"] or 0),
+            precision=row["holdout_precision"],
+            precision_low=row["holdout_low"],
+            precision_high=row["holdout_high"],
+            base_rate=row["holdout_base_rate"],
+            expected_hits=expected_hits,
+            p_value=row["holdout_p_value"],
+            p_holm=held["p_holm"],
+            power=held["power"],
+        ),
+        lead=None
+        if quartiles is None
+        else Lead(
+            quarter=float(quartiles[0]),
+            median=float(quartiles[1]),
+            three_quarters=float(quartiles[2]),
+            hits=int(lead.size),
+        ),
+        workload=Workload(
+            triggers_a_month=workload(case.case, case.row, dates),
+            share_of_events=caught if caught == caught else None,
+        ),
+    )  # fmt: skip
+
+
+def _origin(run: Path, record: Mapping[str, Any]) -> RunOrigin:
+    return RunOrigin(
+        study=record["study"],
+        version=record["versions"]["combination-signal-miner"],
+        discovery_to=record["split"]["discovery_last"],
+        holdout_from=record["split"]["holdout_first"],
+        holdout_to=record["calendar"]["last"],
+        rules_sha256=hashlib.sha256((run / "rules.csv").read_bytes()).hexdigest(),
+        inputs=dict(record["inputs"]),
+    )
+
+
+def _run_name(origin: RunOrigin, record: Mapping[str, Any]) -> str:
+    text = json.dumps([origin.rules_sha256, origin.inputs, record["settings"]], sort_keys=True)
+    return hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()[:8]
+
+
+def _sessions(study: Study, folder: Path, first: str) -> dict[str, Any]:
+    sessions = study.sessions.model_dump(mode="json", exclude_none=True)
+    sessions.pop("end", None)
+    if study.sessions.kind == "dates":
+        sessions["calendar"] = _relative(study.folder / sessions["calendar"], folder)
+    return {**sessions, "start": first}
+
+
+def _section(section: Any, study: Study, folder: Path) -> dict[str, Any]:
+    values = section.model_dump(mode="json", exclude_none=True)
+    values = {key: value for key, value in values.items() if value not in ({}, "error", False)}
+    if section.is_database:
+        raise InputError(
+            explain(
+                "rule book",
+                "groups and coverage",
+                "come from files",
+                "a database",
+                "Export the table, so that a scan needs no password from the book.",
+            )
+        )
+    return {**values, "source": _relative(study.folder / values["source"], folder)}
+
+
+def _relative(path: Path, folder: Path) -> str:
+    return Path(os.path.relpath(path.resolve(), folder.resolve())).as_posix()
+
+
+def _history(inputs: Inputs, rules: Sequence[BookRule], n_workers: int) -> pd.DataFrame:
+    rows = [row for rule in rules for row in _triggers_so_far(inputs, rule, n_workers)]
+    return pd.DataFrame(rows, columns=HISTORY_COLUMNS)
+
+
+def _triggers_so_far(
+    inputs: Inputs, rule: BookRule, n_workers: int
+) -> Iterator[tuple[str, str, str, str]]:
+    """Every trigger of the study, those too whose horizon reaches past its end."""
+    panel = inputs.panel
+    last = panel.n_sessions - 1
+    table = find_triggers(
+        Segment(panel, 0, last),
+        [combo_of(panel, rule.combination)],
+        stratum_code(panel, rule.stratum),
+        lookback=rule.lookback,
+        horizon=0,
+        rest=rule.rest,
+        n_workers=n_workers,
+    )
+    entity, session = table.of(0)
+    wait = profiles.sessions_to_event(entity, session, *panel.events[rule.target])
+    for e, t, w in zip(entity.tolist(), session.tolist(), wait.tolist(), strict=True):
+        is_hit = 0 < w <= rule.horizon
+        outcome = "hit" if is_hit else "open" if t + rule.horizon > last else "miss"
+        yield rule.id, panel.entity_names[e], str(inputs.calendar.dates[t]), outcome
