@@ -56,10 +56,12 @@ class Explanation:
 class _State:
     """What earlier rules of a case have left: cells, triggers, and the null refitted on them."""
 
-    def __init__(self, found: Found, min_triggers: int, fdr: float, n_workers: int) -> None:
+    def __init__(
+        self, found: Found, min_triggers: int, level: float | None, n_workers: int
+    ) -> None:
         self.found = found
         self.min_triggers = min_triggers
-        self.fdr = fdr
+        self.level = level
         self.n_workers = n_workers
         self.rows = found.rows
         self.is_left = np.ones(found.rates.size, dtype=bool)
@@ -91,7 +93,8 @@ class _State:
         self.excess = _excess(self.hits, self.expected, variance)
         hits = self.hits[self.rows]
         skip = self.n[self.rows] < self.min_triggers
-        skip |= cannot_pass(hits, self.expected[self.rows], variance[self.rows], self.fdr)
+        if self.level is not None:
+            skip |= cannot_pass(hits, self.expected[self.rows], variance[self.rows], self.level)
         self.p = np.ones(self.found.size)
         self.p[self.rows] = judge_hits(
             self.rows,
@@ -124,7 +127,9 @@ def explain_away(
     n_workers: int = 1,
 ) -> Explanation:
     """Take rules one by one until nothing passes, then look for sharper supersets of them."""
-    states = [_State(f, min_triggers, fdr, n_workers) for f in found]
+    # drawn adjusted p-values may lie a little below the closed form's, so no short cut there
+    level = None if adjuster.adjust == "westfall-young" else fdr
+    states = [_State(f, min_triggers, level, n_workers) for f in found]
     adjusted = adjuster.adjusted([state.p for state in states])
     passed_before = {
         (i, int(row)) for i, adj in enumerate(adjusted) for row in np.flatnonzero(adj <= fdr)
@@ -259,15 +264,16 @@ def _sharpen(
             if rules[place].sharpens is None:
                 rules[place] = replace(rules[place], sharpens=base, p_sharper=float(p[best]))
         else:
-            rates, is_hit = f.rates[part][is_left], f.case.is_hit[part][is_left]
+            rates, n_hits = f.rates[part][is_left], int(f.case.is_hit[part][is_left].sum())
+            expected, spread = float(rates.sum()), float(np.sqrt((rates * (1 - rates)).sum()))
             rules.append(
                 Rule(
                     rules[base].case,
                     row,
                     int(is_left.sum()),
-                    int(is_hit.sum()),
-                    float(rates.sum()),
-                    float(_excess_of(found, rules, keys[best])),
+                    n_hits,
+                    expected,
+                    (n_hits - expected) / spread if spread > 0 else 0.0,
                     float(p[best]),
                     float(adjusted[best]),
                     None,

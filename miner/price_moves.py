@@ -105,7 +105,9 @@ def _of_series(
     is_inner = np.arange(start.size) > 0
     is_over = known >= 0
     length = at[stop - 1] - at[start] + 1
-    is_major = is_inner & (before > 0) & (np.abs(size) >= settings.threshold * before * np.sqrt(length))
+    is_major = (
+        is_inner & (before > 0) & (np.abs(size) >= settings.threshold * before * np.sqrt(length))
+    )
     mine = is_major & is_over
     return (
         at[start[mine]],
@@ -118,7 +120,9 @@ def _of_series(
     )
 
 
-def move_events(moves: Moves) -> tuple[dict[str, tuple[np.ndarray, np.ndarray]], dict[str, np.ndarray]]:
+def move_events(
+    moves: Moves,
+) -> tuple[dict[str, tuple[np.ndarray, np.ndarray]], dict[str, np.ndarray]]:
     """The moves as events per target, and the session each is known at.
 
     Events are int32 (entity, session), sorted and distinct, as a panel holds them; the second

@@ -37,13 +37,16 @@ def check_free(folder: Path, replace: bool) -> None:
                 "Name another folder, or allow replacing this one (--replace).",
             )
         )
-    if folder.exists() and not (folder / "run.json").is_file() and any(folder.iterdir()):
+    is_other = not folder.is_dir() or (
+        any(folder.iterdir()) and not (folder / "run.json").is_file()
+    )
+    if folder.exists() and is_other:
         raise OutputError(
             explain(
                 "output",
                 str(folder),
                 "be the folder of a run to be replaced",
-                "a folder without run.json",
+                "something else",
                 "Name another folder.",
             )
         )
@@ -89,8 +92,13 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
         if folder.exists():
             old = Path(tempfile.mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
             folder.rename(old / folder.name)
-            aside.rename(folder)
-            shutil.rmtree(old)
+            try:
+                aside.rename(folder)
+            except OSError:
+                (old / folder.name).rename(folder)
+                raise
+            finally:
+                shutil.rmtree(old)
         else:
             aside.rename(folder)
     except OSError as error:

@@ -149,7 +149,7 @@ def placebo_rules(
                 max_size=mining.max_size,
                 start=f.margins,
                 by_mining=False,
-                level=study.testing.fdr,
+                level=None if real.adjuster.adjust == "westfall-young" else study.testing.fdr,
             )
             for i, f in enumerate(real.found)
         ]

@@ -42,16 +42,12 @@ def folds(n_sessions: int, n_folds: int, gap: int, shortest: int) -> list[tuple[
 
     if n_folds < 1 or n_sessions // (n_folds + 1) <= gap:
         return []
-    # the rows split here are sessions, so the gap counts sessions
-    split = (
-        TimeSeriesSplit(n_splits=n_folds, gap=gap)
-        if n_folds > 1
-        else TimeSeriesSplit(n_splits=2, gap=gap)
-    )
-    found = [
-        (int(early[-1]), int(late[0]), int(late[-1]))
-        for early, late in split.split(np.arange(n_sessions))
-    ][-n_folds:]
+    if n_folds == 1:  # the splitter wants two or more
+        half = n_sessions // 2
+        found = [(n_sessions - half - gap - 1, n_sessions - half, n_sessions - 1)]
+    else:  # the rows split are sessions, so that the gap counts sessions
+        split = TimeSeriesSplit(n_splits=n_folds, gap=gap).split(np.arange(n_sessions))
+        found = [(int(early[-1]), int(late[0]), int(late[-1])) for early, late in split]
     return [f for f in found if f[0] + 1 >= shortest and f[2] - f[1] + 1 >= shortest]
 
 

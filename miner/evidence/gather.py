@@ -18,7 +18,7 @@ from miner.evidence.rule_facts import RuleFacts, parts_of, rule_facts
 from miner.evidence.tables import in_stratum, with_rows, within
 from miner.evidence.together import together
 from miner.holdout import Outcome
-from miner.judged import Judged, judge_rules
+from miner.judged import judge_rules
 from miner.panel import Panel
 from miner.search import Search
 from miner.settings import Study

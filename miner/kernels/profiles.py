@@ -153,8 +153,8 @@ def quantiles(q, levels):
 def band(entity, session, rate_et, first_offset, n_d, mean_d, variance_d, third_d, levels):
     """Quantiles of the number of events at each offset: int64 [levels, offsets].
 
-    ``n_d, mean_d, variance_d, third_d`` are those of ``around``. Exact where the variance is small, else
-    by ``refined_normal``.
+    ``n_d, mean_d, variance_d, third_d`` are those of ``around``. Exact where the variance is
+    small, else by ``refined_normal``.
     """
     found = np.zeros((levels.size, n_d.size), dtype=np.int64)
     for d in range(n_d.size):

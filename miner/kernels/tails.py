@@ -11,6 +11,7 @@ from miner.kernels.compiling import kernel, summing_kernel
 TINY = 1e-300
 EXACT_WORK = 100_000  # trials x states up to which one tail is always summed exactly
 EXACT_STATES = 60  # and states up to which it is whatever the number of trials
+LITTLE_SPREAD = 8.0  # variance at the tilt under which the saddlepoint is not trusted
 TABLE_WORK = 300_000  # trials x states up to which a whole table is
 
 
@@ -168,7 +169,11 @@ def upper_tail_from(q, least, start):
         return 0.0, start
     if least == n_possible:
         return exact_tail(q[q > 0.0], least), start
-    return saddlepoint_tail(q, least, start)
+    s, spread = tilt_to(q, float(least), start)
+    if spread < LITTLE_SPREAD:
+        # near the end of what is likely at all the series has too few trials to work with
+        return exact_tail(q, least), s
+    return saddlepoint_tail(q, least, s)
 
 
 @kernel

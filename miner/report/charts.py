@@ -117,7 +117,7 @@ def profile_plot(
         return plot.done(f"{what}: no trigger to draw")
     top = max(max(shown) * 1.08, 1e-9)
     size = {"width": 200, "height": 92, "margin": (6, 6, 18, 34)} if small else {"height": 170}
-    plot = Plot((-reach, reach), (0, top), **size)  # type: ignore[arg-type]
+    plot = Plot((-reach, reach), (0, top), **size)
     plot.box((0.5, min(horizon, reach) + 0.5), (0, top), "window")
     plot.y_axis(_shares(top)[: None if not small else 4])
     band = [
