@@ -100,7 +100,10 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
     for warning in record["warnings"]:
         yield entry("Note", warning)
     yield ""
-    if result.rules.empty:
+    if not counts["family"]:
+        yield f"Nothing could be judged: no combination has {minimum} triggers in discovery. Lower"
+        yield "min_triggers, lengthen the study, or look at what was set aside."
+    elif result.rules.empty:
         yield "No rule: nothing precedes the events more often than chance, the calendar and busy"
         yield "names explain. Most hunts end like this."
     else:
