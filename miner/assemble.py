@@ -115,6 +115,7 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
             n_sessions,
         ),
         *_groups(study, groups, entity_names, calendar),
+        study.testing.margins,
     )
     read = {"alerts": alert_log, "events": event_log, "groups": groups, "coverage": coverage}
     counts = {

@@ -40,3 +40,7 @@ NOT_SIGNIFICANT = "not significant"
 
 JOINER = " + "
 POOLED = "all"
+
+# How an entity's and a date's share combine in the margins null.
+ODDS = "odds"
+HAZARD = "hazard"

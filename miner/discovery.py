@@ -18,6 +18,7 @@ from miner.proposals import count_windows, propose
 from miner.units import Case
 from miner.workers import Progress, silent
 
+FEW_APART = 10
 TIE = 0.01  # drawn log p-values are interpolated and rounded by less: within it, a tie
 
 
@@ -82,9 +83,9 @@ def find(
     else:
         is_proposed = count_windows(is_seen_vk, case.unit.triggers.combo_ck) >= min_hits
         n_proposed = int(is_proposed.sum())
-    table = case.unit.triggers
+    table, panel = case.unit.triggers, case.unit.segment.panel
     margins = fit_margins(
-        case.unit.is_open_et, case.is_window_et, case.unit.segment.panel.peers, start, n_workers
+        case.unit.is_open_et, case.is_window_et, panel.peers, start, n_workers, panel.law
     )
     rates = margins.rates(table.entity, table.session)
     everything = np.ones(rates.size, dtype=bool)
@@ -106,7 +107,7 @@ class Adjuster:
     """One adjustment over the whole family of a run: all targets and strata together.
 
     ``adjust`` is "bh", "by" or "westfall-young"; the last needs drawn p-values
-    (``draw_log_p``), in the order of ``found``.
+    (``draw``), in the order of ``found``.
     """
 
     def __init__(
@@ -139,10 +140,24 @@ class Adjuster:
         return self._null_cr is not None
 
 
-def draw_log_p(
+@dataclass(frozen=True)
+class Drawn:
+    """A case's family in worlds with exchanged sessions.
+
+    Attributes
+    ----------
+    hits_cr, log_p_cr : int32 and float32 [family, draws], hits of every member in every world, and
+        log p of as many
+    """
+
+    hits_cr: np.ndarray
+    log_p_cr: np.ndarray
+
+
+def draw(
     found: Found, n_draws: int, seed: int, n_workers: int = 1, progress: Progress = silent
-) -> np.ndarray:
-    """log p of every family member in worlds with exchanged sessions: float32 [family, draws]."""
+) -> Drawn:
+    """Judge the family in ``n_draws`` worlds with exchanged sessions."""
     table = found.case.unit.triggers
     hits_cr = Exchanger(found.case, seed, "joint").hits(n_draws, n_workers, progress).T
 
@@ -155,4 +170,28 @@ def draw_log_p(
 
     blocks = workers.blocks(found.size, ROWS_A_BLOCK)
     empty = np.empty((0, n_draws), dtype=np.float32)
-    return np.concatenate([empty, *workers.in_order(rank, blocks, n_workers)])
+    log_p_cr = np.concatenate([empty, *workers.in_order(rank, blocks, n_workers)])
+    return Drawn(hits_cr, log_p_cr)
+
+
+def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int]) -> float:
+    """Chance of the family as a whole leaning towards events as much as it does.
+
+    The median, over combinations that share no type with a rule, of (hits - mean of draws) / sd of
+    draws, against the same of each draw. Small where something that is not held fixed drives both
+    sides. Where rules leave under ten combinations, all are taken.
+    """
+    combos = found.case.unit.triggers.combos
+    taken = {k for row in rule_rows for k in combos[row]}
+    mean, spread = drawn.hits_cr.mean(axis=1), drawn.hits_cr.std(axis=1)
+    telling = (mean >= 1.0) & (spread > 0)
+    apart = telling & np.array([taken.isdisjoint(combo) for combo in combos], dtype=bool)
+    some = np.flatnonzero(apart if apart.sum() >= FEW_APART else telling)
+    if some.size == 0:
+        return 1.0
+    observed = np.median((found.hits[some] - mean[some]) / spread[some])
+    middle_r = [
+        np.median((drawn.hits_cr[some, r] - mean[some]) / spread[some])
+        for r in range(drawn.hits_cr.shape[1])
+    ]
+    return float((1 + np.sum(middle_r >= observed)) / (1 + len(middle_r)))

@@ -78,12 +78,9 @@ class _State:
         entity, session = self.triggers(row)
         kernels.close_around(self.is_open_et, entity, session, unit.horizon)
         self.is_left &= kernels.look_up(table.entity, table.session, self.is_open_et)
+        panel = unit.segment.panel
         self.margins = fit_margins(
-            self.is_open_et,
-            case.is_window_et,
-            unit.segment.panel.peers,
-            self.margins,
-            self.n_workers,
+            self.is_open_et, case.is_window_et, panel.peers, self.margins, self.n_workers, panel.law
         )
         self.rates = self.margins.rates(table.entity, table.session)
         everything = np.arange(self.found.size)

@@ -19,7 +19,7 @@ from miner.assemble import Inputs, assemble
 from miner.by_quarter import by_quarter
 from miner.candidates import candidates_table, rules_table
 from miner.chosen import ChosenRule
-from miner.columns import CONFIRMED, JOINER
+from miner.columns import CONFIRMED, JOINER, ODDS
 from miner.compare_models import compare_models
 from miner.errors import SettingsError, explain
 from miner.explain_away import Rule
@@ -195,7 +195,7 @@ def hunt(
     record = {
         "study": study.name,
         "settings": study.as_dict(),
-        "warnings": list(study.warnings),
+        "warnings": [*study.warnings, *_distrust(found, study)],
         "versions": {"python": platform.python_version()} | {p: version(p) for p in PACKAGES},
         "calendar": {
             "name": inputs.calendar.name,
@@ -274,6 +274,29 @@ def hunt(
         progress("writing")
         run_folder.write(result, Path(output), replace)
     return result
+
+
+LEANING = 0.01
+HIGH_BASE_RATE = 0.1
+
+
+def _distrust(found: Search, study: Study) -> Iterator[str]:
+    """Reasons not to believe a hunt that the hunt itself can see."""
+    for f in found.found:
+        rate = _open_rate(f.case.unit.is_open_et, f.case.is_window_et)
+        if study.testing.margins == ODDS and rate is not None and rate > HIGH_BASE_RATE:
+            yield (
+                f"target {f.case.target!r}, stratum {f.case.unit.stratum!r}: at a base rate of "
+                f"{rate:.0%} odds that multiply can expect too few hits where busy names meet busy "
+                'dates; margins = "hazard" in [testing] holds its level there.'
+            )
+    for f, lean in zip(found.found, found.leans, strict=False):
+        if lean <= LEANING:
+            yield (
+                f"target {f.case.target!r}, stratum {f.case.unit.stratum!r}: the family as a whole "
+                f"leans towards events (p {lean:.2g}), not only the rules. A peer column may be "
+                "missing, or names have busy spells of their own; no null here removes those."
+            )
 
 
 def _counts(found: Search, outcomes: list[Outcome], fdr: float) -> dict[str, Any]:

@@ -155,7 +155,7 @@ def _peers(case: Case) -> Iterator[str]:
             f"events leave little to chance: {_named(small)} ({n_small:,} of {entity.size:,} "
             "events). Coarser peers would leave more."
         )
-    margins = fit_margins(unit.is_open_et, case.is_window_et, peers)
+    margins = fit_margins(unit.is_open_et, case.is_window_et, peers, law=unit.segment.panel.law)
     cell_e, cell_t = np.nonzero(unit.is_open_et & case.is_window_et)
     left = 1.0 - float(margins.rates(cell_e, cell_t).mean()) if cell_e.size else 1.0
     if left < LITTLE_CHANCE:

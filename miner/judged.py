@@ -57,8 +57,9 @@ def judge_on(
     )
     unit = make_unit(segment, stratum, code, table, lookback=lookback, horizon=horizon, rest=rest)
     case = make_case(target, unit, segment.panel.events[target])
+    panel = segment.panel
     margins = fit_margins(
-        unit.is_open_et, case.is_window_et, segment.panel.peers, n_workers=n_workers
+        unit.is_open_et, case.is_window_et, panel.peers, n_workers=n_workers, law=panel.law
     )
     rates = margins.rates(table.entity, table.session)
     rows = np.arange(len(table.combos))

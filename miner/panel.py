@@ -7,6 +7,7 @@ from functools import cached_property
 
 import numpy as np
 
+from miner.columns import ODDS
 from miner.kernels import bits, margins
 
 Events = tuple[np.ndarray, np.ndarray]
@@ -39,6 +40,7 @@ class Panel:
     cover_eqw : uint64 [entities, coverage classes, words], bit t: covered on session t
     class_k : int64 [types], the coverage class of each type
     strata, peers : labels of the entity-sessions; ``peers`` always labels every one
+    law : how an entity's and a date's share combine in the margins null (``miner.columns``)
     """
 
     entity_names: tuple[str, ...]
@@ -50,6 +52,7 @@ class Panel:
     class_k: np.ndarray
     strata: Labels | None
     peers: Labels
+    law: str = ODDS
 
     @property
     def n_entities(self) -> int:
@@ -81,6 +84,7 @@ class Panel:
             self.class_k,
             None if self.strata is None else cut_labels(self.strata),
             cut_labels(self.peers),
+            self.law,
         )
 
 

@@ -246,14 +246,14 @@ class _Reader:
         return View(panel, replace(panel, cover_eqw=everywhere[0], class_k=everywhere[1]),
                     self.rules, first, mine)  # fmt: skip
 
-    def _alerts(
-        self, name: str, kinds: Sequence[int], first: int, last: int
-    ) -> tuple[Alert, ...]:
+    def _alerts(self, name: str, kinds: Sequence[int], first: int, last: int) -> tuple[Alert, ...]:
         """The latest alert of each type on an entity in the sessions ``first .. last``."""
         start, stop = self.part_of.get(name, (0, 0))
         part = slice(start, stop)  # of one entity, by stamp
         mine = (self.session[part] >= first) & (self.session[part] <= last)
-        latest = dict(zip(self.kind[part][mine].tolist(), self.row[part][mine].tolist(), strict=True))
+        latest = dict(
+            zip(self.kind[part][mine].tolist(), self.row[part][mine].tolist(), strict=True)
+        )
         return tuple(
             Alert(self.types[k], self._stamp(latest[k])) for k in sorted(kinds) if k in latest
         )
@@ -282,7 +282,8 @@ class _Reader:
                     continue
                 name = view.panel.entity_names[e]
                 seen = dates[(entity == e) & (session + view.first < t)].tolist()
-                past = _past(history, rule.id, name, str(date), seen)
+                settled = str(self.calendar.dates[max(0, self.last - rule.horizon)])
+                past = _past(history, rule.id, name, str(date), seen, settled)
                 alerts = self._alerts(name, kinds, t - rule.lookback + 1, t)
                 hits.append(ScanHit(rule, name, str(date), alerts, left, t == self.last, *past))
         return sorted(hits, key=lambda hit: (-_day(hit.session), -(hit.rule.precision or 0.0),
@@ -367,12 +368,21 @@ def _past(
     entity: str,
     date: str,
     seen: list[str],
+    settled: str,
 ) -> tuple[int, int, int] | tuple[None, None, None]:
-    """Triggers before a date, those that hit, those of unknown outcome."""
+    """Triggers before a date, those that hit, those of unknown outcome.
+
+    What came of triggers after ``settled`` was not known on the scan's session, whatever the book
+    knows of it by now.
+    """
     if history is None:
         return None, None, None
-    outcomes = {day: "open" for day in seen}
-    outcomes |= {day: outcome for day, outcome in history.get((rule, entity), []) if day < date}
+    outcomes = dict.fromkeys(seen, "open")
+    outcomes |= {
+        day: outcome if day <= settled else "open"
+        for day, outcome in history.get((rule, entity), [])
+        if day < date
+    }
     said = list(outcomes.values())
     return len(said), said.count("hit"), said.count("open")
 

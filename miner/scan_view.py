@@ -33,7 +33,9 @@ class View:
     is_mine: np.ndarray
 
     @cache  # noqa: B019 - a view lives as long as one scan
-    def _found(self, is_everywhere: bool, lookback: int, rest: int) -> tuple[TriggerTable, dict[Combo, int]]:
+    def _found(
+        self, is_everywhere: bool, lookback: int, rest: int
+    ) -> tuple[TriggerTable, dict[Combo, int]]:
         """Triggers of all rules with this look-back, at this rest, in all strata together."""
         panel = self.everywhere if is_everywhere else self.panel
         combos = {combo_of(panel, r.combination) for r in self.rules if r.lookback == lookback}

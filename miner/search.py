@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from miner import workers
 from miner.chosen import ChosenRule
-from miner.discovery import Adjuster, Found, draw_log_p, find
+from miner.discovery import Adjuster, Drawn, Found, draw, find, lean_p
 from miner.explain_away import Explanation, explain_away
 from miner.nulls.exchanges import Exchanger
 from miner.settings import Study
@@ -19,11 +19,16 @@ from miner.workers import Progress, silent
 
 @dataclass(frozen=True)
 class Search:
-    """What discovery found: one ``Found`` a target and stratum, and the rules over all of them."""
+    """What discovery found: one ``Found`` a target and stratum, and the rules over all of them.
+
+    ``leans`` has, where worlds were drawn, one p-value a ``Found``: of its family as a whole, not
+    only the rules, leaning towards events.
+    """
 
     found: tuple[Found, ...]
     adjuster: Adjuster
     explanation: Explanation
+    leans: tuple[float, ...] = ()
 
     def chosen(self) -> list[ChosenRule]:
         """The rules as the holdout takes them, in the order found."""
@@ -113,18 +118,20 @@ def search(
         find(case, min_hits=mining.min_hits, max_size=mining.max_size, n_workers=n_workers)
         for case in cases
     ]
-    draws = None
+    draws: list[Drawn] = []
     if testing.permutations and (with_draws or testing.adjust == "westfall-young"):
         progress("exchanging sessions")
-        draws = [
-            draw_log_p(f, testing.permutations, testing.seed, n_workers, progress) for f in found
-        ]
-    adjuster = Adjuster(found, testing.adjust, draws)
+        draws = [draw(f, testing.permutations, testing.seed, n_workers, progress) for f in found]
+    adjuster = Adjuster(found, testing.adjust, [d.log_p_cr for d in draws] or None)
     progress("explaining away")
     explanation = explain_away(
         found, adjuster, fdr=testing.fdr, min_triggers=mining.min_triggers, n_workers=n_workers
     )
-    return Search(tuple(found), adjuster, explanation)
+    leans = tuple(
+        lean_p(f, drawn, [rule.row for rule in explanation.rules if rule.case == i])
+        for i, (f, drawn) in enumerate(zip(found, draws, strict=False))
+    )
+    return Search(tuple(found), adjuster, explanation, leans)
 
 
 def placebo_rules(

@@ -148,7 +148,8 @@ def test_same_seed_writes_the_same_bytes(demo, tmp_path):
     write_demo(other, seed=demo.truth.seed + 1)
     written = sorted(path.name for path in demo.folder.iterdir())
     assert written == [
-        "alerts.parquet", "coverage.csv", "events.csv", "groups.csv", "study.toml", "truth.json",
+        "alerts.parquet", "coverage.csv", "events.csv", "groups.csv", "prices.parquet", "study.toml",
+        "truth.json",
     ]  # fmt: skip
     for name in written:
         assert (again / name).read_bytes() == (demo.folder / name).read_bytes(), name

@@ -16,6 +16,7 @@ from miner.columns import JOINER, POOLED
 from miner.demo.cast import DECOY, PLANTINGS, TARGET, Planting
 from miner.demo.files import write_tables
 from miner.demo.market import HORIZON, LOOKBACK, Market, invent_market
+from miner.demo.prices import write_prices
 from miner.demo.stamps import CLOSE_SECONDS, TIMEZONE
 from miner.seeds import stream
 
@@ -56,8 +57,8 @@ class Truth:
 def write_demo(folder: Path, seed: int = DEFAULT_SEED) -> Truth:
     """Write the invented scenario into ``folder`` (made if missing) and return its truth.
 
-    Files: ``study.toml``, ``alerts.parquet``, ``events.csv``, ``groups.csv``, ``coverage.csv`` and
-    ``truth.json``, which no study reads. The same seed writes the same rows.
+    Files: ``study.toml``, ``alerts.parquet``, ``events.csv``, ``groups.csv``, ``coverage.csv``,
+    ``prices.parquet`` and ``truth.json``, which no study reads. The same seed writes the same rows.
 
     Raises
     ------
@@ -68,6 +69,7 @@ def write_demo(folder: Path, seed: int = DEFAULT_SEED) -> Truth:
     market = invent_market(rng)
     folder.mkdir(parents=True, exist_ok=True)
     write_tables(rng, market, folder)
+    write_prices(stream(seed, "demo", "prices"), market, folder)
     study = folder / "study.toml"
     study.write_text(_study_text(market, seed), encoding="utf-8")
     truth = Truth(study, seed, TARGET, _planted_truth(market), JOINER.join(sorted(DECOY)))
@@ -130,6 +132,10 @@ peers = "sector"              # the null holds each sector's calendar of events 
 
 [coverage]
 source = "coverage.csv"       # who is listed when, and which alert types exist for it
+
+[prices]
+source = "prices.parquet"     # daily bars: what would trades on the rules have earned?
+jumps = "keep"                # an approach can lift a price by that much
 
 [sessions]
 calendar = "weekdays"

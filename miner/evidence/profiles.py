@@ -3,7 +3,8 @@
 The null of a profile holds, on average, how many events each entity has and how many each peer
 group has on each session (the totals that exchanges hold exactly): logit r(e, s) = a(e) +
 b(group, s), fitted to the events themselves over the sessions on which an event could make a
-trigger a hit. The band at an offset k holds the middle 95 % of the number of events on the
+trigger a hit (or the run's other law of the margins null, which is the same where events are
+rare). The band at an offset k holds the middle 95 % of the number of events on the
 sessions t + k of all triggers (e, t), were each an independent draw with chance r(e, t + k). It
 holds offset by offset, not for the curve as a whole: of 41 offsets two stray on average.
 
@@ -70,7 +71,8 @@ def event_rates(case: Case, n_workers: int = 1) -> EventRates:
     is_event_et[case.events] = True
     is_open_et = slot_et >= 0
     peers = Labels(case.unit.segment.panel.peers.names, np.maximum(slot_et, 0))
-    margins = fit_margins(is_open_et, is_event_et, peers, n_workers=n_workers)
+    law = case.unit.segment.panel.law
+    margins = fit_margins(is_open_et, is_event_et, peers, n_workers=n_workers, law=law)
     entity, session = (axis.astype(np.int32) for axis in np.nonzero(is_open_et))
     rate_et = np.full(slot_et.shape, np.nan)
     kernels.spread_rates(entity, session, margins.rates(entity, session), rate_et)

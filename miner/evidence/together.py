@@ -72,7 +72,7 @@ def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int 
         is_open_et[:, : lookback - 1] = False
         on_ew = _kept_on(np.ascontiguousarray(panel.alert_ekw[:, k]), lookback)
         is_on_et = bits.unpack(on_ew, panel.n_sessions)
-        margins = fit_margins(is_open_et, is_on_et & is_open_et, panel.peers)
+        margins = fit_margins(is_open_et, is_on_et & is_open_et, panel.peers, law=panel.law)
         is_there = hit_kernels.look_up(entity, session, is_on_et)
         is_asked = hit_kernels.look_up(entity, session, is_open_et)
         rates = margins.rates(entity, session)

@@ -1,4 +1,4 @@
-"""Maximum-entropy rates with given row and column sums: q = u v / (1 + u v) on open cells.
+"""Rates of open cells with given row and column sums: q = u v / (1 + u v), or 1 - exp(-u v).
 
 Rows are entities, columns are (peer group, session). Open cells come as *spells*: runs of
 sessions on which an entity is open and stays in one peer group, sorted by entity.
@@ -9,6 +9,9 @@ from __future__ import annotations
 import numpy as np
 
 from miner.kernels.compiling import kernel, summing_kernel
+
+MOST_STEP = 1.5  # of a logarithm, in one Newton step
+TINY = 1e-300
 
 
 @kernel
@@ -115,17 +118,66 @@ def settle_sure(spell_e, start_i, stop_i, group_i, windows_e, cells_e, windows_g
 
 
 @summing_kernel
+def row_sums(u, v_t, start_t, stop_t, is_hazard):
+    """Sums over a run of cells of q and of its slope in log u."""
+    total = 0.0
+    slope = 0.0
+    if is_hazard:
+        for t in range(start_t, stop_t):
+            w = u * v_t[t]
+            none = np.exp(-w)
+            total += 1.0 - none
+            slope += w * none
+    else:
+        for t in range(start_t, stop_t):
+            w = u * v_t[t]
+            q = w / (1.0 + w)
+            total += q
+            slope += q / (1.0 + w)
+    return total, slope
+
+
+@summing_kernel
+def add_to_columns(u, v_t, start_t, stop_t, is_hazard, sum_t, slope_t):
+    """Add a run of cells' q, and its slope in log v, to the column sums in place."""
+    if is_hazard:
+        for t in range(start_t, stop_t):
+            w = u * v_t[t]
+            none = np.exp(-w)
+            sum_t[t] += 1.0 - none
+            slope_t[t] += w * none
+    else:
+        for t in range(start_t, stop_t):
+            w = u * v_t[t]
+            q = w / (1.0 + w)
+            sum_t[t] += q
+            slope_t[t] += q / (1.0 + w)
+
+
+@kernel
 def row_sweep(
-    first_i, last_i, spell_e, start_i, stop_i, group_i, u_e, v_gt, target_e, sum_gt, var_gt
+    first_i,
+    last_i,
+    spell_e,
+    start_i,
+    stop_i,
+    group_i,
+    u_e,
+    v_gt,
+    target_e,
+    is_hazard,
+    sum_gt,
+    slope_gt,
 ):
     """One Newton step of every row of a block, then the block's column sums with the new rows.
 
-    Spells ``[first_i, last_i)`` hold whole entities. ``u_e`` is changed in place; ``sum_gt`` and
-    ``var_gt`` [groups, sessions] receive the sums of q and of q (1 - q). Returns the largest
-    relative miss of a row before its step.
+    q is u v / (1 + u v), or 1 - exp(-u v) where ``is_hazard``. Spells ``[first_i, last_i)`` hold
+    whole entities. ``u_e`` is changed in place; ``sum_gt`` and ``slope_gt`` [groups, sessions]
+    receive the sums of q and of its slope in log v. Returns the largest relative miss of a row
+    before its step.
     """
     sum_gt[:] = 0.0
-    var_gt[:] = 0.0
+    slope_gt[:] = 0.0
     worst = 0.0
     i = first_i
     while i < last_i:
@@ -136,27 +188,20 @@ def row_sweep(
         u = u_e[e]
         if u > 0.0:
             total = 0.0
-            spread = 0.0
+            slope = 0.0
             for m in range(i, j):
-                v_t = v_gt[group_i[m]]
-                for t in range(start_i[m], stop_i[m]):
-                    w = u * v_t[t]
-                    q = w / (1.0 + w)
-                    total += q
-                    spread += q / (1.0 + w)
+                run_total, run_slope = row_sums(
+                    u, v_gt[group_i[m]], start_i[m], stop_i[m], is_hazard
+                )
+                total += run_total
+                slope += run_slope
             miss = total - target_e[e]
             worst = max(worst, abs(miss) / target_e[e])
-            u *= np.exp(min(2.0, max(-2.0, -miss / spread)))
+            u *= np.exp(min(MOST_STEP, max(-MOST_STEP, -miss / max(slope, TINY))))
             u_e[e] = u
             for m in range(i, j):
-                v_t = v_gt[group_i[m]]
-                sum_t = sum_gt[group_i[m]]
-                var_t = var_gt[group_i[m]]
-                for t in range(start_i[m], stop_i[m]):
-                    w = u * v_t[t]
-                    q = w / (1.0 + w)
-                    sum_t[t] += q
-                    var_t[t] += q / (1.0 + w)
+                g = group_i[m]
+                add_to_columns(u, v_gt[g], start_i[m], stop_i[m], is_hazard, sum_gt[g], slope_gt[g])
         i = j
     return worst
 
@@ -175,7 +220,9 @@ def single_groups(group_et):
 
 
 @kernel
-def cell_rates(entity, session, group_et, group_e, u_e, v_gt, row_order, col_order):
+def cell_rates(
+    entity, session, group_et, group_e, u_e, v_gt, row_order, col_order, is_hazard=False
+):
     """q of the cells (entity[i], session[i]): float64, the shape of ``entity``.
 
     ``group_e`` is ``single_groups(group_et)``: it spares most cells a look into a large array.
@@ -189,7 +236,7 @@ def cell_rates(entity, session, group_et, group_e, u_e, v_gt, row_order, col_ord
         row, col = row_order[e], col_order[g, t]
         if row == 0 and col == 0:
             w = u_e[e] * v_gt[g, t]
-            q[i] = w / (1.0 + w)
+            q[i] = -np.expm1(-w) if is_hazard else w / (1.0 + w)
         elif col == 0 or (row != 0 and abs(row) < abs(col)):
             q[i] = 1.0 if row > 0 else 0.0
         else:

@@ -8,6 +8,7 @@ import numpy as np
 from scipy.special import ndtr
 
 from miner import workers
+from miner.columns import HAZARD, ODDS
 from miner.kernels import hits as hit_kernels
 from miner.kernels import margins as kernels
 from miner.nulls import Judgement
@@ -34,6 +35,7 @@ class Margins:
         table with these margins, and that value
     miss : float, largest relative difference between a fitted and an observed total
     n_sweeps : int, sweeps it took
+    law : how an entity's and a date's share combine (``miner.columns``)
     """
 
     peers: Labels
@@ -44,6 +46,7 @@ class Margins:
     fixed: tuple[np.ndarray, np.ndarray] | None
     miss: float
     n_sweeps: int
+    law: str = ODDS
 
     def rates(self, entity: np.ndarray, session: np.ndarray) -> np.ndarray:
         """Chance of an event window at each open cell: float64, the shape of ``entity``."""
@@ -56,6 +59,7 @@ class Margins:
             self.odds_gt,
             self.row_order,
             self.col_order,
+            self.law == HAZARD,
         )
         if self.fixed is not None:
             is_fixed, value = (flags[entity, session] for flags in self.fixed)
@@ -69,12 +73,15 @@ def fit_margins(
     peers: Labels,
     start: Margins | None = None,
     n_workers: int = 1,
+    law: str = ODDS,
 ) -> Margins:
-    """Maximum-entropy rates whose row and column sums over open cells are the observed ones.
+    """Rates whose row and column sums over open cells are the observed ones.
 
-    logit q(e, t) = a(e) + b(peer(e, t), t): the Rasch model, fitted by maximum likelihood, one
-    Newton step of every row and of every column in turn (the log likelihood is concave). Where
-    the solution lies at infinity for some cells, those are found and held at their value.
+    With the law "odds", logit q(e, t) = a(e) + b(peer(e, t), t): the Rasch model, of maximum
+    entropy, fitted by one Newton step of every row and of every column in turn (the log likelihood
+    is concave). With "hazard", log(-log(1 - q)) is that sum: events that arrive at a rate that
+    multiplies leave a window empty with chance exp(-u v). The two agree where windows are rare.
+    Where the solution lies at infinity for some cells, those are found and held at their value.
 
     Parameters
     ----------
@@ -89,7 +96,7 @@ def fit_margins(
     counts = kernels.totals(*spells, is_window_et, len(peers.names))
     row_order, col_order = kernels.settle_sure(*spells, *counts)
     is_row, is_col = row_order == 0, col_order == 0
-    odds = _Odds(spells, counts, is_row, is_col, start, n_workers)
+    odds = _Odds(spells, counts, is_row, is_col, start, n_workers, law)
     fixed = None
     if not odds.fit(PATIENCE):
         is_free_et = _free_cells(is_open_et, is_window_et, peers, is_row, is_col)
@@ -102,15 +109,15 @@ def fit_margins(
             counts = kernels.totals(*spells, is_window_et, len(peers.names))
             is_row &= counts[1] > 0
             is_col &= counts[3] > 0
-            odds = _Odds(spells, counts, is_row, is_col, None, n_workers)
+            odds = _Odds(spells, counts, is_row, is_col, None, n_workers, law)
         odds.fit(MOST_SWEEPS)
     return Margins(
-        peers, odds.row, odds.column, row_order, col_order, fixed, odds.miss, odds.n_sweeps
+        peers, odds.row, odds.column, row_order, col_order, fixed, odds.miss, odds.n_sweeps, law
     )
 
 
 class _Odds:
-    """Odds of rows and columns, improved sweep by sweep."""
+    """What rows and columns multiply to (odds, or a hazard), improved sweep by sweep."""
 
     def __init__(
         self,
@@ -120,7 +127,9 @@ class _Odds:
         is_col: np.ndarray,
         start: Margins | None,
         n_workers: int,
+        law: str,
     ) -> None:
+        self.is_hazard = law == HAZARD
         windows_e, cells_e, windows_gt, cells_gt = counts
         self.spells, self.is_row, self.is_col, self.n_workers = spells, is_row, is_col, n_workers
         self.target_e = np.where(is_row, windows_e, 1).astype(np.float64)
@@ -153,12 +162,18 @@ class _Odds:
                 return True
             step_gt = np.zeros_like(gap_gt)
             np.divide(gap_gt, var_gt, out=step_gt, where=var_gt > 0)
-            self.column *= np.exp(np.clip(-step_gt, -2.0, 2.0))
+            self.column *= np.exp(np.clip(-step_gt, -kernels.MOST_STEP, kernels.MOST_STEP))
         return False
 
     def _sweep_rows(self, part: int) -> float:
         return kernels.row_sweep(
-            *self.parts[part], *self.spells, self.row, self.column, self.target_e, *self.sums[part]
+            *self.parts[part],
+            *self.spells,
+            self.row,
+            self.column,
+            self.target_e,
+            self.is_hazard,
+            *self.sums[part],
         )
 
 
@@ -254,7 +269,11 @@ class MarginsNull:
         """Judge the combinations ``rows`` of ``case.unit.triggers``."""
         unit, table = case.unit, case.unit.triggers
         margins = fit_margins(
-            unit.is_open_et, case.is_window_et, unit.segment.panel.peers, n_workers=n_workers
+            unit.is_open_et,
+            case.is_window_et,
+            unit.segment.panel.peers,
+            n_workers=n_workers,
+            law=unit.segment.panel.law,
         )
         rates = margins.rates(table.entity, table.session)
         is_left = np.ones(rates.size, dtype=bool)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -91,17 +92,7 @@ def _recount(
 ) -> dict[Combo, tuple[int, int]]:
     """Triggers and hits of combinations on redrawn alerts."""
     unit, panel = case.unit, case.unit.segment.panel
-    shuffled = Panel(
-        panel.entity_names,
-        panel.type_names,
-        panel.n_sessions,
-        alert_ekw,
-        panel.events,
-        panel.cover_eqw,
-        panel.class_k,
-        panel.strata,
-        panel.peers,
-    )
+    shuffled = replace(panel, alert_ekw=alert_ekw)
     segment = Segment(shuffled, unit.segment.first, unit.segment.last)
     table = find_triggers(
         segment, combos, unit.code, lookback=unit.lookback, horizon=unit.horizon, rest=unit.rest

@@ -134,6 +134,7 @@ class TestingSettings(Section):
     __test__ = False  # pytest would take the name for a test class
 
     adjust: Literal["bh", "by", "westfall-young"] = "bh"
+    margins: Literal["odds", "hazard"] = "odds"
     fdr: Share = 0.05
     permutations: Annotated[int, whole(0)] = 2000
     placebo: Annotated[int, whole(0)] = 20

@@ -10,7 +10,7 @@ import numpy as np
 
 from miner.columns import CONFIRMED
 from miner.discovery import TIE as SLACK
-from miner.discovery import Adjuster, Found, draw_log_p, find
+from miner.discovery import Adjuster, Found, draw, find
 from miner.explain_away import explain_away
 from miner.holdout import judge_holdout
 from miner.kernels import tails
@@ -94,7 +94,7 @@ def search_all(
     study = study_of(world)
     (case,) = cases_of(early, [TARGET], study)
     found = find(case, min_hits=study.mining.min_hits, max_size=study.mining.max_size)
-    log_p = draw_log_p(found, DRAWS, world.seed)
+    log_p = draw(found, DRAWS, world.seed).log_p_cr
     adjusters = {how: Adjuster([found], how, [log_p]) for how in ADJUSTS}
     runs_log_p = None
     if with_whole_runs:
