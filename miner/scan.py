@@ -181,7 +181,7 @@ class _Reader:
         self.entity, self.kind, self.session = log.entity_code[kept], kind[kept], session[kept]
         self.row = kept
         codes, start = np.unique(self.entity, return_index=True)
-        stop = np.append(start[1:], kept.size)
+        stop = np.append(start, kept.size)[1:]
         self.part_of = {
             log.entity_names[code]: bounds
             for code, *bounds in zip(codes.tolist(), start.tolist(), stop.tolist(), strict=True)

@@ -211,7 +211,7 @@ def test_unknown_tables_and_keys_suggest_the_nearest():
         "`settings`: `settings` must hold known tables only; got `[grups]`. Did you mean `groups`?"
     )
     assert found[1].endswith("got `lookbak`. Did you mean `lookback`?")
-    assert "Known: adjust, fdr, permutations" in found[2]
+    assert "Known: adjust, margins, fdr, permutations" in found[2]
 
 
 def test_all_problems_come_at_once_and_no_echo_of_one():
