@@ -29,7 +29,7 @@ from miner.panel import Panel, pack_alerts, pack_coverage
 from miner.read_tables import Log, read_coverage, read_groups, read_log
 from miner.rule_book.records import STATUSES, BookRule, RuleBook
 from miner.rule_cases import combo_of
-from miner.scan_view import View
+from miner.scan_view import LONG_AGO, View
 from miner.session_calendar import SessionCalendar, build_calendar
 from miner.settings import Study, is_url, study_from_dict
 
@@ -289,14 +289,23 @@ class _Reader:
         return sorted(hits, key=lambda hit: (-_day(hit.session), -(hit.rule.precision or 0.0),
                                              hit.entity, hit.rule.id))  # fmt: skip
 
+    def _latest(self, view: View, stop: int) -> np.ndarray:
+        """Session of the view of each entity's latest alert of each type before ``stop``.
+
+        int64 [entities, types], long ago where there is none.
+        """
+        shape = view.panel.n_entities, len(self.types)
+        latest_ek = np.full(shape, LONG_AGO, dtype=np.int64)
+        codes = np.unique(self.entity[view.is_mine])
+        mine = view.is_mine & (self.session < stop + view.first)
+        entity = np.searchsorted(codes, self.entity[mine])
+        session = self.session[mine].astype(np.int64) - view.first
+        np.maximum.at(latest_ek, (entity, self.kind[mine]), session)
+        return latest_ek
+
     def _one_short(self, view: View) -> list[OneShort]:
         panel, now = view.panel, view.panel.n_sessions - 1
-        last_ek = np.full((panel.n_entities, len(self.types)), -(1 << 30), dtype=np.int64)
-        mine = view.is_mine
-        entity = np.searchsorted(np.unique(self.entity[mine]), self.entity[mine])
-        np.maximum.at(
-            last_ek, (entity, self.kind[mine]), self.session[mine].astype(np.int64) - view.first
-        )
+        last_ek, before_ek = (self._latest(view, stop) for stop in (now + 1, now))
         covered_eq = (panel.cover_eqw[:, :, now >> 6] >> np.uint64(now & 63)) & np.uint64(1) != 0
         everyone = np.arange(panel.n_entities)
         found = []
@@ -307,11 +316,14 @@ class _Reader:
             expires_ek = last_ek[:, kinds] + rule.lookback - 1
             is_on_ek = expires_ek >= now
             is_short = is_on_ek.sum(axis=1) == kinds.size - 1
+            was_on_e = (before_ek[:, kinds] + rule.lookback - 1 >= now - 1).all(axis=1)
             is_short &= covered_eq[:, panel.class_k[kinds]].all(axis=1)
             is_short &= view.in_stratum(rule, everyone, np.full(everyone.size, now))
             left_e = np.where(is_on_ek, expires_ek, 1 << 30).min(axis=1) - now
             rested_from_e = view.last_trigger(rule) + rule.rest
             is_short &= now + left_e >= rested_from_e
+            # complete a session ago and again on this one is no new completion
+            is_short &= ~was_on_e | (left_e > 0)
             for e in np.flatnonzero(is_short).tolist():
                 missing = self.types[int(kinds[~is_on_ek[e]][0])]
                 on = kinds[is_on_ek[e]].tolist()

@@ -193,7 +193,6 @@ def test_one_short_is_what_one_more_alert_completes(world):
             then = scan(book, path, book_folder=folder, as_of=FIRST + dt.timedelta(last))
             keys = {(h.rule.id, h.entity) for h in then.hits if h.is_new}
             is_covered_then = last <= 50 or item.entity not in ("n0", "n1", "n2")
-            if (item.rule.id, item.entity) not in keys and is_covered_then: print(t, last, item, [x for x in world[2] if x[0]==item.rule.id and x[1]==item.entity], before[before.entity==item.entity].sort_values("time").tail(12))
             if is_covered_then:
                 assert (item.rule.id, item.entity) in keys
                 tried += 1
