@@ -115,7 +115,7 @@ def profile_plot(
         plot = Plot((-reach, reach), (0, 1), width=200 if small else 340, height=60)
         plot.text(plot.width / 2, 34, "no trigger")
         return plot.done(f"{what}: no trigger to draw")
-    top = max(max(shown) * 1.08, 1e-9)
+    top = max(shown) * 1.08 or 0.01
     size = {"width": 200, "height": 92, "margin": (6, 6, 18, 34)} if small else {"height": 170}
     plot = Plot((-reach, reach), (0, top), **size)
     plot.box((0.5, min(horizon, reach) + 0.5), (0, top), "window")

@@ -25,6 +25,7 @@ from miner.triggers import find_triggers
 from miner.workers import Progress, silent
 
 from .records import (
+    DIGITS,
     FORMAT,
     BookRule,
     Findings,
@@ -95,7 +96,9 @@ def rules_of(
     origin = _origin(run, record)
     name = _run_name(origin, record)
     rules = tuple(
-        _rule(key, row, step, case, inputs.calendar.dates, name)
+        BookRule.model_validate(
+            _rounded(_rule(key, row, step, case, inputs.calendar.dates, name).model_dump())
+        )
         for key, row, step, case in zip(keys, table, record["rules"], cases, strict=True)
     )
     folder = Path(book_folder) if book_folder is not None else run
@@ -310,6 +313,13 @@ def _rule(
             share_of_events=caught if caught == caught else None,
         ),
     )  # fmt: skip
+
+
+def _rounded(value: Any) -> Any:
+    """Numbers as the book's file holds them, so that a book is the same before and after it."""
+    if isinstance(value, dict):
+        return {key: _rounded(item) for key, item in value.items()}
+    return float(f"{value:.{DIGITS}g}") if isinstance(value, float) else value
 
 
 def _origin(run: Path, record: Mapping[str, Any]) -> RunOrigin:

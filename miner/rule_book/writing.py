@@ -13,11 +13,10 @@ from typing import Any
 
 from miner.errors import OutputError, explain
 
-from .records import BookRule, RuleBook, RunOrigin
+from .records import DIGITS, BookRule, RuleBook, RunOrigin
 from .words import rule_words
 
 _BARE = re.compile(r"^[A-Za-z0-9_-]+$")
-DIGITS = 6
 
 HEADER = """\
 # Rule book: combinations of alerts that came before events, with their evidence.
