@@ -15,11 +15,10 @@ from miner.assemble import Inputs, assemble
 from miner.hunting import split_sessions
 from miner.input_warnings import find_warnings
 from miner.kernels import bits
-from miner.search import cases_of
+from miner.search import cases_of, codes_of
 from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
-from miner.triggers import TriggerTable
-from miner.units import Case, make_case, make_unit, stratum_codes
+from miner.units import Case, bare_cases
 from miner.workers import Progress, silent
 
 TRIGGER_COUNTS = (20, 50, 100, 200)
@@ -68,7 +67,12 @@ def check(
     panel, calendar = inputs.panel, inputs.calendar
     progress("counting combinations")
     early = cases_of(discovery_slice(panel, last), inputs.targets, study, n_workers=n_workers)
-    late = _holdout_cases(inputs, first)
+    late = bare_cases(
+        holdout_slice(panel, first, panel.n_sessions - 1),
+        inputs.targets,
+        codes_of(panel, study),
+        **study.windows.model_dump(),
+    )
     family = sum(len(case.unit.triggers.combos) for case in early)
     record = {
         "study": study.name,
@@ -93,34 +97,6 @@ def check(
         _power(targets, family, study),
         (*study.warnings, *find_warnings(inputs, early, late, calendar.dates)),
     )
-
-
-def _holdout_cases(inputs: Inputs, first: int) -> list[Case]:
-    """Targets and strata on the holdout, without any combination."""
-    study, panel = inputs.study, inputs.panel
-    segment = holdout_slice(panel, first, panel.n_sessions - 1)
-    empty = np.empty(0, dtype=np.int32)
-    nothing = TriggerTable((), np.zeros(1, dtype=np.int64), empty, empty)
-    windows = study.windows
-    units = [
-        make_unit(
-            segment,
-            name,
-            code,
-            nothing,
-            lookback=windows.lookback,
-            horizon=windows.horizon,
-            rest=windows.rest,
-        )
-        for name, code in stratum_codes(
-            panel, study.groups is not None and study.groups.pooled
-        ).items()
-    ]
-    return [
-        make_case(target, unit, segment.panel.events[target])
-        for target in inputs.targets
-        for unit in units
-    ]
 
 
 def _types(inputs: Inputs) -> pd.DataFrame:

@@ -95,6 +95,19 @@ def check(study: Path, workers: int | None) -> None:
 
 
 @main.command()
+@click.argument("run", type=click.Path(path_type=Path))
+@click.option("--open", "show_it", is_flag=True, help="Open it in the browser.")
+def report(run: Path, show_it: bool) -> None:
+    """Render the report of RUN (a run's folder) again."""
+    from miner.report import render
+
+    page = render(run)
+    click.echo(f"Written to {page}")
+    if show_it:
+        click.launch(str(page.resolve()))
+
+
+@main.command()
 @click.argument("folder", type=click.Path(path_type=Path), default=Path("demo"))
 @click.option("--seed", type=click.IntRange(min=0), default=None, help="Another invented world.")
 @workers_option

@@ -19,8 +19,7 @@ from miner.kernels import windows as kernels
 from miner.seeds import stream
 from miner.settings import Study
 from miner.time_split import DiscoverySlice, HoldoutSlice, Segment
-from miner.triggers import TriggerTable
-from miner.units import Case, make_case, make_unit
+from miner.units import Case, bare_cases
 
 MOST_ROWS = 60_000  # cells to fit on: all in an event window, or half of this, and a sample
 RECENT_SESSIONS = (20, 60)
@@ -66,10 +65,7 @@ def compare_models(
 
 def _case(segment: Segment, target: str, study: Study) -> Case:
     """All entities together, without combinations."""
-    empty = np.empty(0, dtype=np.int32)
-    nothing = TriggerTable((), np.zeros(1, dtype=np.int64), empty, empty)
-    unit = make_unit(segment, POOLED, None, nothing, **study.windows.model_dump())
-    return make_case(target, unit, segment.panel.events[target])
+    return bare_cases(segment, [target], {POOLED: None}, **study.windows.model_dump())[0]
 
 
 def _triggers_of(

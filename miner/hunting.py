@@ -22,12 +22,15 @@ from miner.chosen import ChosenRule
 from miner.columns import CONFIRMED, JOINER, ODDS
 from miner.compare_models import compare_models
 from miner.errors import SettingsError, explain
+from miner.evidence import gather
 from miner.explain_away import Rule
 from miner.holdout import Outcome, judge_holdout
+from miner.input_warnings import find_warnings
 from miner.nulls.plain_shuffle import PlainShuffleNull
-from miner.search import Search, placebo_rules, search
+from miner.search import Search, codes_of, placebo_rules, search
 from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
+from miner.units import bare_cases
 from miner.walk_forward import FoldRule, walk_forward
 from miner.wording import combination_name
 from miner.workers import Progress, silent
@@ -54,6 +57,7 @@ class Hunt:
     candidates, rules : tables with the columns of ``miner.columns``
     quarters : precision of each rule by quarter, over the whole study
     walk_forward : rules of each fold with what the next fold said
+    evidence : what ``evidence.json`` holds: what the report shows beyond the tables
     record : what ``run.json`` holds: settings, counts, placebo, steps, versions, timings
     set_aside : unreadable rows that the study asked to set aside
     folder : the run's folder, None if nothing was written
@@ -65,6 +69,7 @@ class Hunt:
     walk_forward: pd.DataFrame
     plain_shuffle: pd.DataFrame | None
     record: dict[str, Any]
+    evidence: dict[str, Any]
     set_aside: pd.DataFrame
     folder: Path | None = None
 
@@ -187,6 +192,22 @@ def hunt(
                 study,
                 n_workers,
             )
+    with stages.stage("evidence"):
+        bare = bare_cases(late, inputs.targets, codes_of(panel, study), **windows.model_dump())
+        seen = tuple(
+            find_warnings(inputs, [f.case for f in found.found], bare, inputs.calendar.dates)
+        )
+        evidence = gather(
+            found,
+            outcomes,
+            candidates,
+            panel,
+            inputs.calendar.dates,
+            study,
+            holdout_first=first,
+            warnings=seen,
+            n_workers=n_workers,
+        )
     shuffled = None
     if testing.shuffle:
         with stages.stage("plain shuffle"):
@@ -267,6 +288,7 @@ def hunt(
         _walk_table(inputs, fold_rules),
         shuffled,
         record,
+        evidence.as_dict(),
         inputs.set_aside,
         None if output is None else Path(output),
     )

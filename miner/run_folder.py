@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from miner.errors import OutputError, explain
+from miner.report import render_into
 
 if TYPE_CHECKING:
     from miner.hunting import Hunt
@@ -89,6 +90,9 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
             _write_table(result.set_aside, aside / "set_aside.csv")
         text = json.dumps(_plain(result.record), indent=1, ensure_ascii=False, allow_nan=False)
         (aside / "run.json").write_text(text + "\n", encoding="utf-8")
+        evidence = json.dumps(_plain(result.evidence), ensure_ascii=False, allow_nan=False)
+        (aside / "evidence.json").write_text(evidence + "\n", encoding="utf-8")
+        render_into(aside)
         if folder.exists():
             old = Path(tempfile.mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
             folder.rename(old / folder.name)

@@ -10,6 +10,7 @@ from miner.chosen import ChosenRule
 from miner.discovery import Adjuster, Drawn, Found, draw, find, lean_p
 from miner.explain_away import Explanation, explain_away
 from miner.nulls.exchanges import Exchanger
+from miner.panel import Panel
 from miner.settings import Study
 from miner.time_split import DiscoverySlice
 from miner.triggers import TriggerTable, find_family
@@ -58,7 +59,7 @@ def families_of(segment: DiscoverySlice, study: Study, n_workers: int = 1) -> Fa
     windows, mining = study.windows, study.mining
     return find_family(
         segment,
-        _codes(segment, study),
+        codes_of(segment.panel, study),
         lookback=windows.lookback,
         horizon=windows.horizon,
         rest=windows.rest,
@@ -68,8 +69,9 @@ def families_of(segment: DiscoverySlice, study: Study, n_workers: int = 1) -> Fa
     )
 
 
-def _codes(segment: DiscoverySlice, study: Study) -> dict[str, int | None]:
-    return stratum_codes(segment.panel, study.groups is not None and study.groups.pooled)
+def codes_of(panel: Panel, study: Study) -> dict[str, int | None]:
+    """The strata a study hunts in (``units.stratum_codes``)."""
+    return stratum_codes(panel, study.groups is not None and study.groups.pooled)
 
 
 def cases_of(
@@ -83,7 +85,7 @@ def cases_of(
     families = families or families_of(segment, study, n_workers)
     units = [
         make_unit(segment, name, code, families[name], **study.windows.model_dump())
-        for name, code in _codes(segment, study).items()
+        for name, code in codes_of(segment.panel, study).items()
     ]
     return [
         make_case(target, unit, segment.panel.events[target])

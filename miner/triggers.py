@@ -69,6 +69,12 @@ class TriggerTable:
         )
 
 
+def no_triggers() -> TriggerTable:
+    """A table of no combination."""
+    empty = np.empty(0, dtype=np.int32)
+    return TriggerTable((), np.zeros(1, dtype=np.int64), empty, empty)
+
+
 def _rows(combos: Sequence[Combo]) -> tuple[np.ndarray, np.ndarray]:
     """Combinations of one size as the kernel takes them: sorted rows and where prefixes change."""
     combo_ck = np.array(combos, dtype=np.int64)
@@ -245,6 +251,5 @@ def find_triggers(
         level = [combo for combo in wanted if len(combo) == size]
         levels.append((level, _find(segment, level, lookback, rest, horizon, n_workers)))
     if not levels:
-        empty = np.empty(0, dtype=np.int32)
-        return TriggerTable((), np.zeros(1, dtype=np.int64), empty, empty)
+        return no_triggers()
     return _table(levels, segment.panel, stratum_code, 0)

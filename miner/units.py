@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -11,7 +12,7 @@ from miner.columns import POOLED
 from miner.kernels import bits, hits, windows
 from miner.panel import Events, Panel
 from miner.time_split import Segment
-from miner.triggers import Combo, TriggerTable
+from miner.triggers import Combo, TriggerTable, no_triggers
 
 
 def stratum_codes(panel: Panel, pooled: bool) -> dict[str, int | None]:
@@ -122,6 +123,27 @@ def make_case(target: str, unit: Unit, events: Events) -> Case:
     )
     is_hit = hits.look_up(unit.triggers.entity, unit.triggers.session, is_window_et)
     return Case(target, unit, (entity, session), is_window_et, is_hit)
+
+
+def bare_cases(
+    segment: Segment,
+    targets: Sequence[str],
+    codes: dict[str, int | None],
+    *,
+    lookback: int,
+    horizon: int,
+    rest: int,
+) -> list[Case]:
+    """Every target in every stratum, without any combination."""
+    units = [
+        make_unit(segment, name, code, no_triggers(), lookback=lookback, horizon=horizon, rest=rest)
+        for name, code in codes.items()
+    ]
+    return [
+        make_case(target, unit, segment.panel.events[target])
+        for target in targets
+        for unit in units
+    ]
 
 
 def base_rates(case: Case) -> np.ndarray:
