@@ -16,6 +16,8 @@ if TYPE_CHECKING:
 
 WIDTH = 100
 LABEL = 14
+LONGEST_STRATUM = 16
+NUMBER_WIDTHS = (7, 6, 14, 8, 9, 6)
 
 CAUTIONS = (
     "Research, not advice: past precision does not promise any to come. Alerts ahead of corporate "
@@ -38,11 +40,25 @@ def p_text(p: float) -> str:
     return "< 1e-300" if p <= 1e-300 else f"{p:.2g}"
 
 
+def wrapped(text: str, first: str = "", rest: str = "") -> str:
+    """A paragraph no wider than the screen; ``first`` stands before its first line."""
+    return textwrap.fill(plain(text), WIDTH, initial_indent=first, subsequent_indent=rest)
+
+
+def plain(text: str) -> str:
+    """Names come from tables: nothing in them may steer a terminal."""
+    return "".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text)
+
+
+def cut(text: str, width: int) -> str:
+    """A name that has to stay in its column."""
+    text = plain(text)
+    return text if len(text) <= width else text[: width - 3] + "..."
+
+
 def entry(label: str, text: str) -> str:
     """A labelled paragraph of the summary."""
-    return textwrap.fill(
-        text, WIDTH, initial_indent=f"{label:<{LABEL}}", subsequent_indent=" " * LABEL
-    )
+    return wrapped(text, f"{label:<{LABEL}}", " " * LABEL)
 
 
 def hunt_lines(result: Hunt) -> Iterator[str]:
@@ -50,7 +66,8 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
     record = result.record
     counts, split, settings = record["counts"], record["split"], record["settings"]
     calendar = record["calendar"]
-    yield f"{record['study']}: {calendar['first']} to {calendar['last']}, " + (
+    yield wrapped(
+        f"{record['study']}: {calendar['first']} to {calendar['last']}, "
         f"{calendar['sessions']:,} sessions ({calendar['name']}, {calendar['timezone']})"
     )
     yield ""
@@ -93,7 +110,7 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
             "Placebo",
             f"the same hunt finds {placebo['mean_rules']:.2g} rules on average in "
             f"{placebo['worlds']} worlds with nothing to find (any in "
-            f"{percent(placebo['share_with_any'])} of them)",
+            f"{100 * placebo['share_with_any']:g}% of them)",
         )
     yield from _walk_text(record)
     yield from _models_text(record)
@@ -139,36 +156,46 @@ def read_text(tables: dict[str, dict[str, int]], n_entities: int, n_types: int) 
 def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]]) -> Iterator[str]:
     """The rules in the order found; a combination found in several strata is told once.
 
-    Under each combination one line a stratum: verdict, holdout, expectation, discovery.
+    Under each combination one line a stratum, in columns that are the same for all rules.
     """
     table = rules.to_dict("records")
+    width = min(LONGEST_STRATUM, max(len("stratum"), *(len(rule["stratum"]) for rule in table)))
+    yield _columns(
+        width,
+        "stratum",
+        "verdict",
+        ("holdout", "of", "95% interval", "expected", "discovery", "of"),
+    )
     told: set[tuple[str, str]] = set()
-    width = max(len(rule["stratum"]) for rule in table)
     for rule in table:
         key = rule["target"], rule["combination"]
         if key in told:
             continue
         told.add(key)
-        yield f"{rule['rule_order']:>3}. {rule['combination']} -> {rule['target']}"
+        yield wrapped(
+            f"{rule['combination']} -> {rule['target']}", f"{rule['rule_order']:>3}. ", " " * 5
+        )
         for same, step in zip(table, steps, strict=True):
             if (same["target"], same["combination"]) == key:
                 yield from _stratum_lines(same, step, width)
 
 
+def _columns(width: int, stratum: str, verdict: str, numbers: Sequence[str]) -> str:
+    cells = "".join(f"  {cell:>{w}}" for cell, w in zip(numbers, NUMBER_WIDTHS, strict=True))
+    return f"     {cut(stratum, width):<{width}}  {verdict:<12}{cells}"
+
+
 def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> Iterator[str]:
     n = rule["holdout_triggers"]
-    if n:
-        holdout = (
-            f"holdout {percent(rule['holdout_precision'])} of {n} "
-            f"({percent(rule['holdout_low'])} to {percent(rule['holdout_high'])}), "
-            f"{percent(rule['holdout_expected_hits'] / n)} expected"
-        )
-    else:
-        holdout = "no trigger in the holdout"
-    yield (
-        f"     {rule['stratum']:<{width}}  {rule['verdict']:<12}  {holdout}; "
-        f"discovery {percent(rule['precision'])} of {rule['triggers']}"
+    low, high = percent(rule["holdout_low"]), percent(rule["holdout_high"])
+    holdout = (
+        (percent(rule["holdout_precision"]), f"{n:,}", f"{low} to {high}")
+        + (percent(rule["holdout_expected_hits"] / n),)
+        if n
+        else ("-", "0", "-", "-")
     )
+    discovery = percent(rule["precision"]), f"{rule['triggers']:,}"
+    yield _columns(width, rule["stratum"], rule["verdict"], (*holdout, *discovery))
     notes = []
     if rule["sharpens"]:
         p = step["holdout"]["p_sharper"]
@@ -184,10 +211,8 @@ def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> It
             f"beware: the entities' own timing explains it (p {p_text(rule['p_own_timing'])})"
         )
     if notes:
-        indent = " " * (9 + width)
-        yield textwrap.fill(
-            "; ".join(notes), WIDTH, initial_indent=indent, subsequent_indent=indent
-        )
+        indent = " " * (7 + width)
+        yield wrapped("; ".join(notes), indent, indent)
 
 
 def _walk_text(record: dict[str, Any]) -> Iterator[str]:
@@ -226,7 +251,8 @@ def _of(target: str, stratum: str) -> str:
 def check_lines(result: Check) -> Iterator[str]:
     """What ``miner check`` prints."""
     record = result.record
-    yield f"{record['study']}: {record['first']} to {record['last']}, " + (
+    yield wrapped(
+        f"{record['study']}: {record['first']} to {record['last']}, "
         f"{record['sessions']:,} sessions ({record['calendar']}, {record['timezone']})"
     )
     yield ""
@@ -280,15 +306,20 @@ def check_lines(result: Check) -> Iterator[str]:
     yield from aligned(("target", "", *(f"{n} triggers" for n in counts)), power_rows)
     yield ""
     for warning in result.warnings:
-        yield textwrap.fill(f"! {warning}", WIDTH, subsequent_indent="  ")
+        yield wrapped(warning, "! ", "  ")
     if not result.warnings:
         yield "Nothing looks wrong."
 
 
 def aligned(header: Sequence[str], rows: Sequence[Sequence[str]]) -> Iterator[str]:
-    """Rows under a header, first column to the left, the others to the right."""
+    """Rows under a header, first column to the left, the others to the right.
+
+    The first column gives way where the table would be wider than the screen.
+    """
     widths = [max(len(row[i]) for row in (header, *rows)) for i in range(len(header))]
+    room = WIDTH - 2 - sum(w + 2 for w in widths[1:])
+    first_width = max(len(header[0]), min(widths[0], room))
     for row in (header, *rows):
-        first = f"  {row[0]:<{widths[0]}}"
+        first = f"  {cut(row[0], first_width):<{first_width}}"
         rest = "".join(f"  {cell:>{w}}" for cell, w in zip(row[1:], widths[1:], strict=True))
         yield (first + rest).rstrip()

@@ -67,7 +67,9 @@ covers = st.integers(1, 7).flatmap(
 )
 
 
-@given(covers, st.lists(st.integers(1, 50), min_size=7, max_size=7), st.sampled_from([0.5, 0.9, 1.0]))
+@given(
+    covers, st.lists(st.integers(1, 50), min_size=7, max_size=7), st.sampled_from([0.5, 0.9, 1.0])
+)
 def test_the_smallest_set_is_the_smallest_of_all(columns, triggers, share):
     caught = np.array(columns).T
     n_rules = caught.shape[0]

@@ -93,7 +93,9 @@ def test_lead_workload_and_history_are_those_of_the_twin(run):
         months = (last - first + 1) * 12 / 365.25
         assert rule.workload.triggers_a_month == pytest.approx(len(cells) / months, rel=1e-5)
         mine = history[history["rule"] == rule.id]
-        told = {(e, s): o for e, s, o in mine[["entity", "session", "outcome"]].itertuples(index=False)}
+        told = {
+            (e, s): o for e, s, o in mine[["entity", "session", "outcome"]].itertuples(index=False)
+        }
         for (e, t), wait in zip(cells, waits, strict=True):
             date = str(pd.Timestamp(FIRST_DAY) + pd.Timedelta(days=t))[:10]
             assert told.pop((e, date)) == ("miss" if wait is None else "hit")
@@ -123,7 +125,9 @@ def test_paths_are_relative_to_the_book(run):
 def test_ids_do_not_change_between_runs_and_never_clash(run, tmp_path):
     """Half of the alerts again, other names of companies: rules found in both have one id."""
     _, world, _, _, book = run
-    other = replace(world, alerts=frozenset(world.alerts), events=frozenset(sorted(world.events)[3:]))
+    other = replace(
+        world, alerts=frozenset(world.alerts), events=frozenset(sorted(world.events)[3:])
+    )
     path = write_study(other, tmp_path, shuffle_rows_seed=4)
     study = load_study(path)
     study = replace(study, holdout=study.holdout.model_copy(update={"folds": 0}))

@@ -78,7 +78,12 @@ def walks(rng: np.random.Generator, panel: Panel, own_tail: float) -> Prices:
 
 
 def null_worlds(
-    n_worlds: int, *, cost_bps: float, exit_: str = "horizon", own_tail: float = 4.0, n_draws: int = 500
+    n_worlds: int,
+    *,
+    cost_bps: float,
+    exit_: str = "horizon",
+    own_tail: float = 4.0,
+    n_draws: int = 500,
 ) -> Iterator[NullWorld]:
     """Worlds without anything to earn, each with fifteen pairs of alert types as rules."""
     settings = PriceSettings(source="-", costs_bps=cost_bps, slippage_bps=0.0, exit=exit_)

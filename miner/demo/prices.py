@@ -45,9 +45,10 @@ def write_prices(rng: np.random.Generator, market: Market, folder: Path) -> None
 def _bars(rng: np.random.Generator, market: Market) -> dict[str, FloatArray]:
     """Open, high, low, close and volume: float64 [companies, sessions]."""
     shape = market.companies.names.size, market.day.size
-    common = rng.normal(0, _MARKET_SD, shape[1]) + rng.normal(0, _SECTOR_SD, (len(SECTORS), shape[1]))[
-        market.companies.sector
-    ]
+    common = (
+        rng.normal(0, _MARKET_SD, shape[1])
+        + rng.normal(0, _SECTOR_SD, (len(SECTORS), shape[1]))[market.companies.sector]
+    )
     own = rng.normal(0, _OWN_SD, shape)
     number = {kind.name: k for k, kind in enumerate(ALERT_KINDS)}
     jolt = _cells(market, number["price jolt"])

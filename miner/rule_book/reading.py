@@ -59,9 +59,7 @@ def read_rule_book(path: str | Path) -> RuleBook:
     try:
         book = RuleBook.model_validate(raw)
     except ValidationError as error:
-        found_lines = [
-            _issue_line(path, lines, issue) for issue in error.errors(include_url=False)
-        ]
+        found_lines = [_issue_line(path, lines, issue) for issue in error.errors(include_url=False)]
         raise SettingsError("\n".join(found_lines)) from None
     problems = _problems(path, lines, book)
     if problems:

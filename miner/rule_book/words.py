@@ -31,7 +31,9 @@ def rule_words(rule: BookRule) -> Iterator[str]:
         text += f" It followed {_share(rule.precision)} of {held.triggers} later triggers"
         if rule.precision_low is not None and rule.precision_high is not None:
             text += f" ({_share(rule.precision_low)} to {_share(rule.precision_high)})"
-        text += f"; {_share(rule.expected)} was to be expected." if rule.expected is not None else "."
+        text += (
+            f"; {_share(rule.expected)} was to be expected." if rule.expected is not None else "."
+        )
     elif rule.discovery is not None:
         text += (
             f" It followed {rule.discovery.hits} of {rule.discovery.triggers} triggers it was "

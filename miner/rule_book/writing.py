@@ -29,7 +29,9 @@ HEADER = """\
 # compliance before acting on a rule. Local rules and licensed practice come first.
 """
 _SESSIONS = "# Which session a stamp belongs to: as in the study the rules came from."
-_SPANS = "# Who belongs where and what is covered: as in the study. Paths are relative to this file."
+_SPANS = (
+    "# Who belongs where and what is covered: as in the study. Paths are relative to this file."
+)
 _RUN = "# Where rules came from: the run's split, and SHA-256 of its rules and of what it read."
 _COMMENTS = {
     "precision": "share of triggers followed by the event, in the holdout",
@@ -102,7 +104,9 @@ def _lines(book: RuleBook) -> Iterator[str]:
         yield from _rule(rule)
 
 
-def _table(name: str, values: dict[str, Any], comments: dict[str, str] | None = None) -> Iterator[str]:
+def _table(
+    name: str, values: dict[str, Any], comments: dict[str, str] | None = None
+) -> Iterator[str]:
     yield f"[{name}]"
     for key, value in values.items():
         if value is not None and value != {}:

@@ -157,6 +157,8 @@ def evaluate_trades(
             rows.append(_row(rule, part, mine, sign, study.prices, float(p)))
             trades.append(_named(rule, part, mine, inputs))
             curves.append(_curve(rule, part, mine, segment, inputs))
+    order = {rule.id: i for i, rule in enumerate(rules)}
+    rows.sort(key=lambda row: order[row["rule"]])  # a rule's two parts together
     return TradeTable(
         pd.DataFrame(rows, columns=RULE_COLUMNS),
         pd.concat(trades, ignore_index=True) if trades else pd.DataFrame(),
@@ -179,7 +181,9 @@ def tried_in(run: str | Path, study: Study) -> list[TriedRule]:
     run = Path(run)
     read_run(run)
     text = {name: str for name in ("target", "stratum", "combination")}
-    table = pd.read_csv(run / "candidates.csv", dtype=text, usecols=list(text), keep_default_na=False)
+    table = pd.read_csv(
+        run / "candidates.csv", dtype=text, usecols=list(text), keep_default_na=False
+    )
     windows = study.windows
     return [
         TriedRule(target, stratum, tuple(combination.split(JOINER)), windows.lookback,
@@ -244,7 +248,14 @@ def _take(
 
 
 def _key(rule: NamedRule) -> tuple[Any, ...]:
-    return rule.target, rule.stratum, tuple(rule.combination), rule.lookback, rule.horizon, rule.rest
+    return (
+        rule.target,
+        rule.stratum,
+        tuple(rule.combination),
+        rule.lookback,
+        rule.horizon,
+        rule.rest,
+    )
 
 
 def _p_all(

@@ -65,7 +65,9 @@ def clustered_mean(value: np.ndarray, entity: np.ndarray, block: np.ndarray) -> 
     error = math.sqrt(variance)
     quantile = float(stats.t.ppf(0.975, n_clusters - 1))
     p = float(stats.t.sf(mean / error, n_clusters - 1))
-    return Mean(mean, error, mean - quantile * error, mean + quantile * error, p, n_clusters, is_few)
+    return Mean(
+        mean, error, mean - quantile * error, mean + quantile * error, p, n_clusters, is_few
+    )
 
 
 def stationary_draws(
