@@ -215,6 +215,7 @@ def hunt(
 
     record = {
         "study": study.name,
+        "command": f"miner hunt {study.path.name}" if study.path else None,
         "settings": study.as_dict(),
         "warnings": [*study.warnings, *_distrust(found, study)],
         "versions": {"python": platform.python_version()} | {p: version(p) for p in PACKAGES},

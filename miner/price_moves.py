@@ -76,14 +76,13 @@ def find_moves(prices: Prices, settings: PriceSettings) -> Moves:
             if at.size <= settings.volatility_sessions:
                 continue
             found = _of_series(at, np.log(prices.close_et[e, at]), settings)
-            *columns, finished, unfinished = found
-            n_all, n_unfinished = n_all + int(finished), n_unfinished + int(unfinished)
-            parts.append((np.full(columns[0].size, e), *columns))
-    whole = [np.concatenate(column) for column in zip(*parts, strict=True)] if parts else None
-    if whole is None:
-        whole = [np.empty(0)] * 6
-    sessions = [part.astype(np.int32) for part in whole[:4]]
-    return Moves(*sessions, whole[4], whole[5], n_all, n_unfinished)
+            n_all, n_unfinished = n_all + found[5], n_unfinished + found[6]
+            parts.append((np.full(found[0].size, e), *found[:5]))
+    if not parts:
+        parts.append((np.empty(0),) * 6)
+    columns = [np.concatenate(column) for column in zip(*parts, strict=True)]
+    entity, start, end, known = (column.astype(np.int32) for column in columns[:4])
+    return Moves(entity, start, end, known, columns[4], columns[5], n_all, n_unfinished)
 
 
 def _of_series(

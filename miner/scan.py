@@ -26,7 +26,7 @@ import numpy as np
 from miner.assemble import _code_map, _groups, _spans, _used_names
 from miner.errors import SettingsError, TableError, explain
 from miner.panel import Panel, pack_alerts, pack_coverage
-from miner.read_tables import Log, read_coverage, read_groups, read_log
+from miner.read_tables import Log, SpanTable, read_coverage, read_groups, read_log
 from miner.rule_book.records import STATUSES, BookRule, RuleBook
 from miner.rule_cases import combo_of
 from miner.scan_view import LONG_AGO, View
@@ -168,8 +168,9 @@ class _Reader:
         self.types = tuple(sorted({name for rule in rules for name in rule.combination}))
         self.groups, self.coverage = read_groups(study), read_coverage(study)
         session = calendar.session_of(log.stamp_us, log.is_bare_date)
-        tables = [table for table in (self.groups, self.coverage) if table is not None]
-        known = {name for table in tables or [log] for name in _used_names(table)}
+        spans = [table for table in (self.groups, self.coverage) if table is not None]
+        tables: Sequence[Log | SpanTable] = spans or [log]
+        known = {name for table in tables for name in _used_names(table)}
         is_known = np.array([name in known for name in log.entity_names] or [False])
         kind = _code_map(log.type_names, self.types)[log.type_code]
         is_inside = (session >= 0) & (session <= self.last)
@@ -230,8 +231,13 @@ class _Reader:
         names = tuple(self.log.entity_names[code] for code in codes)
         n_sessions = len(calendar)
         alert_ekw = pack_alerts(
-            entity, self.kind[mine], self.session[mine] - first, len(names), len(self.types), n_sessions
-        )  # fmt: skip
+            entity,
+            self.kind[mine],
+            self.session[mine] - first,
+            len(names),
+            len(self.types),
+            n_sessions,
+        )
         spans = _spans(self.coverage, "type", names, calendar) if self.coverage else None
         panel = Panel(
             names,
@@ -286,8 +292,9 @@ class _Reader:
                 past = _past(history, rule.id, name, str(date), seen, settled)
                 alerts = self._alerts(name, kinds, t - rule.lookback + 1, t)
                 hits.append(ScanHit(rule, name, str(date), alerts, left, t == self.last, *past))
-        return sorted(hits, key=lambda hit: (-_day(hit.session), -(hit.rule.precision or 0.0),
-                                             hit.entity, hit.rule.id))  # fmt: skip
+        return sorted(
+            hits, key=lambda hit: (-hit.sessions_left + hit.rule.horizon, *_by_promise(hit))
+        )
 
     def _latest(self, view: View, stop: int) -> np.ndarray:
         """Session of the view of each entity's latest alert of each type before ``stop``.
@@ -330,16 +337,15 @@ class _Reader:
                 name = panel.entity_names[e]
                 alerts = self._alerts(name, on, self.last - rule.lookback + 1, self.last)
                 found.append(OneShort(rule, name, missing, alerts, int(left_e[e])))
-        return sorted(found, key=lambda short: (-(short.rule.precision or 0.0), -short.sessions_left,
-                                                short.entity, short.rule.id))  # fmt: skip
+        return sorted(found, key=_by_promise)
 
     def _warnings(self, needed: int) -> list[str]:
         found = []
         dates = self.calendar.dates
         if self.first_alert > needed:
             found.append(
-                f"The log begins on {dates[self.first_alert]}, the look-backs of triggers still open "
-                f"on {dates[needed]}: combinations begun before the log are missed."
+                f"The log begins on {dates[self.first_alert]}, the look-backs of triggers still "
+                f"open on {dates[needed]}: combinations begun before the log are missed."
             )
         if self.n_later:
             found.append(f"{self.n_later:,} alerts of later sessions were not looked at.")
@@ -399,5 +405,5 @@ def _past(
     return len(said), said.count("hit"), said.count("open")
 
 
-def _day(date: str) -> int:
-    return int(np.datetime64(date, "D").astype(int))
+def _by_promise(item: ScanHit | OneShort) -> tuple[float, int, str, str]:
+    return -(item.rule.precision or 0.0), -item.sessions_left, item.entity, item.rule.id

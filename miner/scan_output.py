@@ -75,14 +75,18 @@ def scan_lines(result: Scan) -> Iterator[str]:
         yield "Nothing has triggered that is still inside its horizon."
     else:
         yield "Triggered (* on this session):"
-        header = ("", "session", "left", "entity", "expected", "before", "combination -> target")
-        yield from _aligned(header, [_hit_row(hit) for hit in result.hits])
+        yield from _aligned(
+            ("", "session", "left", "entity", "expected", "before", "combination -> target"),
+            [_hit_row(hit) for hit in result.hits],
+        )
     yield ""
     if result.one_short:
         yield f"One alert short ({len(result.one_short):,}):"
-        header = ("left", "entity", "expected", "missing", "seen -> target")
         shown = result.one_short[:MOST_SHORT]
-        yield from _aligned(header, [_short_row(short) for short in shown])
+        yield from _aligned(
+            ("left", "entity", "expected", "missing", "seen -> target"),
+            [_short_row(short) for short in shown],
+        )
         if len(result.one_short) > len(shown):
             yield f"  and {len(result.one_short) - len(shown):,} more (in the csv and json)"
         yield ""

@@ -189,8 +189,12 @@ def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> It
     n = rule["holdout_triggers"]
     low, high = percent(rule["holdout_low"]), percent(rule["holdout_high"])
     holdout = (
-        (percent(rule["holdout_precision"]), f"{n:,}", f"{low} to {high}")
-        + (percent(rule["holdout_expected_hits"] / n),)
+        (
+            percent(rule["holdout_precision"]),
+            f"{n:,}",
+            f"{low} to {high}",
+            percent(rule["holdout_expected_hits"] / n),
+        )
         if n
         else ("-", "0", "-", "-")
     )

@@ -34,7 +34,7 @@ def test_the_report_is_in_the_folder_and_can_be_made_again(run):
     for name in names:
         (run / name).unlink()
     done = CliRunner().invoke(main, ["report", str(run)])
-    assert (done.exit_code, done.stdout.strip()) == (0, f"Written: {run / 'report.html'}")
+    assert (done.exit_code, done.stdout.strip()) == (0, f"Written to {run / 'report.html'}")
     assert [(run / name).read_bytes() for name in names] == before
 
 

@@ -419,7 +419,7 @@ def test_curve_time_in_market_and_overlap_are_recounted(traded):
     for part in ("discovery", "holdout"):
         trades = found.trades.query("part == @part")
         curve = found.curve.query("part == @part").set_index("date")
-        held = {date: 0 for date in curve.index}
+        held = dict.fromkeys(curve.index, 0)
         for entry, leave in trades[["entry", "exit"]].itertuples(index=False):
             for date in pd.date_range(entry, leave).strftime("%Y-%m-%d"):
                 held[date] += 1
@@ -481,13 +481,13 @@ def test_without_opens_the_close_is_the_entry(traded):
         [prices[e, d] for e, d in trades[["entity", "entry"]].itertuples(index=False)]
     )
     assert found.rules["median_turnover_share"].isna().all()
+    short = [rules[0].model_copy(update={"horizon": 1})]
     with pytest.raises(SettingsError, match="add a column open"):
-        short = [rules[0].model_copy(update={"horizon": 1})]
         evaluate_trades(short, study_with(folder), n_draws=50)
 
 
 def test_companies_without_prices_are_counted_and_stale_exits_told_of(traded):
-    folder, world, bars = traded
+    folder, world, _ = traded
     found = evaluate_trades(book_rules(world), study_with(folder), n_draws=50)
     assert found.rules["unpriced"].sum() > 0
     assert (found.rules["triggers"] == found.rules["trades"] + found.rules["unpriced"]).all()
@@ -513,7 +513,7 @@ def test_all_that_was_tried_makes_the_test_stricter(traded):
 
 
 def test_moves_can_be_targets_and_down_is_sold_short(traded):
-    folder, world, _ = traded
+    folder, *_ = traded
     keys = {"threshold": 1.0, "volatility_sessions": 20}
     rules = [
         BookRule(id=rule_id(**k), **k)

@@ -28,7 +28,8 @@ def _always(reason: str) -> Callable[[str | None], str]:
 
 
 class TableReader:
-    """One pass over a table: for each chunk `codes`, `stamps`, `numbers`, then `keep`; then `finish`."""
+    """One pass over a table: for each chunk `codes`, `stamps` and `numbers`, then `keep`; at the
+    end `finish`."""
 
     def __init__(
         self, study: Study, settings: TableSettings, wanted: Wanted, may_be_empty: Iterable[str]

@@ -14,7 +14,7 @@ import numpy as np
 import pandas as pd
 
 from miner.assemble import Inputs, assemble
-from miner.columns import CONFIRMED, JOINER, REFUTED
+from miner.columns import CANDIDATE_COLUMNS, CONFIRMED, JOINER, REFUTED
 from miner.errors import InputError, SettingsError, TableError, explain
 from miner.evidence.lead_times import lead_times, share_caught, workload
 from miner.kernels import profiles
@@ -153,7 +153,7 @@ def read_run(run: Path) -> tuple[dict[str, Any], list[dict[str, Any]]]:
     """
     try:
         record = json.loads((run / "run.json").read_text(encoding="utf-8"))
-        text = {name: str for name in ("target", "stratum", "combination", "sharpens")}
+        text = dict.fromkeys(("target", "stratum", "combination", "sharpens"), str)
         table = pd.read_csv(run / "rules.csv", dtype=text, keep_default_na=False,
                             na_values={c: [""] for c in _NUMBERS} | {"sharpens": [""]})  # fmt: skip
         rows = [
@@ -170,11 +170,7 @@ def read_run(run: Path) -> tuple[dict[str, Any], list[dict[str, Any]]]:
     return record, rows
 
 
-_NUMBERS = (
-    "triggers hits precision precision_low precision_high base_rate expected_hits p_value q_value "
-    "p_own_timing holdout_triggers holdout_hits holdout_precision holdout_low holdout_high "
-    "holdout_base_rate holdout_expected_hits holdout_p_value"
-).split()
+_NUMBERS = [name for name, kind in CANDIDATE_COLUMNS.items() if kind != "text"]
 
 
 def study_of_run(run: Path, record: Mapping[str, Any]) -> Study:

@@ -14,7 +14,7 @@ from miner.columns import JOINER
 from miner.settings.sections import Section
 from miner.settings.values import Name, Names, number, whole
 
-FORMAT = 1
+FORMAT: Literal[1] = 1
 DIGITS = 6  # of the numbers in a book's file
 STATUSES = ("candidate", "live", "watch", "retired")
 Status = Literal["candidate", "live", "watch", "retired"]

@@ -1,4 +1,4 @@
-"""Evaluates rules as trading rules: discovery and holdout apart, and all that was tried together."""
+"""Evaluates rules as trading rules: discovery and holdout apart, and all tried together."""
 
 from __future__ import annotations
 
@@ -180,7 +180,7 @@ def tried_in(run: str | Path, study: Study) -> list[TriedRule]:
 
     run = Path(run)
     read_run(run)
-    text = {name: str for name in ("target", "stratum", "combination")}
+    text = dict.fromkeys(("target", "stratum", "combination"), str)
     table = pd.read_csv(
         run / "candidates.csv", dtype=text, usecols=list(text), keep_default_na=False
     )

@@ -65,8 +65,9 @@ def take_positions(
     is_priced = has_close_et[entity, entry]
     is_hit = case.is_hit[is_priced]
     entity, trigger, entry = entity[is_priced], trigger[is_priced], entry[is_priced]
-    no_open_et = np.full(has_close_et.shape, np.nan) if prices.open_et is None else None
-    open_et = no_open_et if prices.open_et is None else prices.open_et
+    open_et = prices.open_et
+    if open_et is None:
+        open_et = np.full(has_close_et.shape, np.nan)
     is_open_entry = ~np.isnan(open_et[entity, entry])
     planned = trigger + horizon
     is_open_exit = np.zeros(entity.size, dtype=bool)
