@@ -8,7 +8,7 @@ calls the same event).
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -49,6 +49,7 @@ class Redundancy:
     is_proven: bool
     events_caught: int
     calls_a_month: float
+    share: float
 
 
 def redundancy(
@@ -124,6 +125,7 @@ def _of_target(
         is_proven,
         total,
         len(taken) / months,
+        share,
     )
 
 
@@ -254,3 +256,30 @@ def redundancy_table(result: Redundancy) -> pd.DataFrame:
     table["closest_before"], table["overlap"] = closest, value
     table["in_smallest"] = table["rule"].isin(result.smallest)
     return table
+
+
+def redundancy_lines(result: Redundancy) -> Iterator[str]:
+    """The rules of one target in greedy order for a terminal, and the smallest set that will do."""
+    table = redundancy_table(result)
+    yield f"{result.target}: rules by events caught that none before caught"
+    header = ("", "new", "caught", "calls a month", "rule", "most like")
+    rows = [
+        (
+            f"{row['place']}{'*' if row['in_smallest'] else ''}",
+            str(row["new_events"]),
+            "-" if math.isnan(row["share_of_caught"]) else f"{100 * row['share_of_caught']:.0f}%",
+            f"{row['calls_a_month']:.2g}",
+            f"{row['combination']} ({row['stratum']})",
+            "" if row["closest_before"] is None or not row["overlap"] > 0
+            else f"{row['closest_before']} {100 * row['overlap']:.0f}%",
+        )
+        for row in table.to_dict("records")
+    ]  # fmt: skip
+    widths = [max(len(row[i]) for row in (header, *rows)) for i in range(len(header))]
+    for row in (header, *rows):
+        yield "  " + "  ".join(f"{cell:<{w}}" for cell, w in zip(row, widths, strict=True)).rstrip()
+    few = "fewest" if result.is_proven else "few"
+    yield (
+        f"* the {few} rules that catch {100 * result.share:.0f}% of the {result.events_caught:,} "
+        "events that all of them catch"
+    )

@@ -245,6 +245,26 @@ def test_moves_of_real_series_are_as_long_as_they_were_measured_to_be(name):
     assert 10 <= np.median(three) <= 18
 
 
+def test_alerts_from_the_same_prices_precede_extremes_even_in_a_random_walk():
+    """The caution of the module, put to the test: a new low is no news of a move up, and yet half as
+    many again or more follow it, since a move up starts at a low. Close-to-close moves have
+    little of that (straight falls are calm, and calm makes moves large; own simulation)."""
+    rng = np.random.default_rng(1)
+    close_et = 50 * np.exp(np.cumsum(rng.normal(0, 0.02, (12, 6000)), axis=1))
+    before = pd.DataFrame(close_et.T).shift(1).rolling(60).min().to_numpy().T
+    is_low, is_asked = close_et < before, ~np.isnan(before)
+    lift = {}
+    for how in ("extremes", "close-to-close"):
+        moves = find_moves(prices_of(close_et), settings(moves=how))
+        events, _ = move_events(moves)
+        is_window = np.zeros(close_et.shape, dtype=bool)
+        for e, s in zip(*events[MOVE_UP], strict=True):
+            is_window[e, max(0, s - 5) : s] = True
+        lift[how] = is_window[is_low].mean() / is_window[is_asked].mean()
+    assert 1.4 < lift["extremes"] < 2.2
+    assert 0.9 < lift["close-to-close"] < lift["extremes"] - 0.3
+
+
 # reading and placing
 
 
@@ -420,8 +440,8 @@ def test_the_table_of_moves_reads_as_dates_and_simple_returns():
     assert row["sessions"] == at[1] - at[0] + 1
     summary = moves_summary(moves)
     assert summary[MOVE_UP]["events"] + summary[MOVE_DOWN]["events"] == len(table)
-    none = replace(moves, **{k: getattr(moves, k)[:0] for k in
-                             ("entity", "start", "end", "known", "size", "volatility")})  # fmt: skip
+    columns = ("entity", "start", "end", "known", "size", "volatility")
+    none = replace(moves, **{name: getattr(moves, name)[:0] for name in columns})
     assert moves_summary(none)[MOVE_UP] == {
         "events": 0, "share_of_one_session": None, "median_sessions": None, "median_size": None,
     }  # fmt: skip

@@ -143,7 +143,8 @@ def test_ids_do_not_change_between_runs_and_never_clash(run, tmp_path):
 def test_the_id_hangs_on_what_the_rule_says_and_on_nothing_else():
     base = {"target": "t", "stratum": "all", "combination": ("b", "a"), "lookback": 5,
             "horizon": 5, "rest": 5}  # fmt: skip
-    # first digits of sha256sum over ["t","all",["a","b"],5,5,5]; fixed for good: a change here would orphan the statuses people gave their rules
+    # the first digits of sha256sum over ["t","all",["a","b"],5,5,5]
+    # fixed for good: a change here would orphan the statuses people gave their rules
     assert rule_id(**base) == "32df76c346"
     assert rule_id(**base | {"combination": ("a", "b")}) == rule_id(**base)
     others = [base | {key: value} for key, value in
@@ -161,7 +162,7 @@ def test_a_run_whose_tables_changed_or_are_gone_is_refused(run, tmp_path):
     assert len(rules_of(tmp_path / "a" / "run").book.rule) >= 2
     with (tmp_path / "a" / "events.csv").open("a") as file:
         file.write("007,2021-01-09 12:00:00,upset\n")
-    with pytest.raises(TableError, match="events.csv.*be what the run read"):
+    with pytest.raises(TableError, match=r"events\.csv.*be what the run read"):
         rules_of(tmp_path / "a" / "run")
     (tmp_path / "a" / "alerts.csv").unlink()
     with pytest.raises(SettingsError, match="--study"):
@@ -223,8 +224,9 @@ def book_of(folder: Path, text: str) -> RuleBook:
 def test_a_rule_by_hand_gets_its_id(tmp_path):
     book = book_of(tmp_path, HAND)
     assert [rule.id for rule in book.rule] == [
-        rule_id("upset", "all", ["delay", "gap"], 5, 5, 5), rule_id("upset", "all", ["memo"], 5, 5, 5),
-    ]  # fmt: skip
+        rule_id("upset", "all", ["delay", "gap"], 5, 5, 5),
+        rule_id("upset", "all", ["memo"], 5, 5, 5),
+    ]
     assert book.rule[0].status == "live"
     assert book.rule[0].holdout.p_value == 1e-5
     assert book.rule[1].status == "candidate"
@@ -239,7 +241,8 @@ def test_a_rule_by_hand_gets_its_id(tmp_path):
         ('status = "live"', 'status = "alive"', 15, "`rule.status` must be 'candidate', 'live'"),
         ('status = "live"', "status = 3", 15, "got 3"),
         ('status = "live"', 'state = "live"', 15, "`rule.state` must be a known key"),
-        ('target = "upset"\ncombination = ["g', 'combination = ["g', 14, "`rule.target` must be given"),
+        ('target = "upset"\ncombination = ["g', 'combination = ["g', 14,
+         "`rule.target` must be given"),
         ("lookback = 5\nhorizon = 5\nrest = 5\nrun", "lookback = 0\nhorizon = 5\nrest = 5\nrun", 18,
          "be a whole number of at least 1"),
         ("precision = 0.4", "precision = 40", 22, "Write 44 % as 0.44"),

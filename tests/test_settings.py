@@ -242,8 +242,13 @@ def test_warnings_do_not_stop_a_study():
         groups={"source": "g.csv", "pooled": True},
     )
     assert found.windows.rest == 2
-    assert [text.split("]")[0] for text in found.warnings] == ["[windows", "[groups"]
+    assert [text.split("]")[0] for text in found.warnings] == ["[windows", "[groups", "[prices"]
     assert "rest = 2 is below horizon = 5" in found.warnings[0]
+    assert "in a random walk too" in found.warnings[2]
+    for keys in ({"moves": "off"}, {"moves": "close-to-close"}):
+        assert study(prices={"source": "p.parquet", **keys}).warnings == ()
+    events = {"source": "e.csv", "targets": ["upset"]}
+    assert study(events=events, prices={"source": "p.parquet"}).warnings == ()
 
 
 @pytest.mark.parametrize(

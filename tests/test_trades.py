@@ -304,7 +304,17 @@ def traded(tmp_path):
     return tmp_path, world, bars
 
 
-def twin_trades(world, bars, rule, first, last, sector_of, *, side, sign=1, exit_="horizon"):
+def of(table, **values):
+    """The rows with these values."""
+    return table[np.logical_and.reduce([table[key] == value for key, value in values.items()])]
+
+
+def session_of(date):
+    """Session of a date in a tiny world."""
+    return (pd.Timestamp(date) - pd.Timestamp(FIRST_DAY)).days
+
+
+def twin_trades(world, bars, rule, first, last, sign, exit_):
     """Every trade in loops over dictionaries: entity, trigger, entry, exit, gross, worst."""
     close = {(e, t): c for e, t, c in bars[["entity", "t", "close"]].itertuples(index=False)}
     open_ = {(e, t): c for e, t, c in bars[["entity", "t", "open"]].itertuples(index=False)}
@@ -328,7 +338,11 @@ def twin_trades(world, bars, rule, first, last, sector_of, *, side, sign=1, exit
         return None if start is None else stop / start - 1
 
     def abnormal(kind, e, t):
-        peers = [f for f in world.known if f != e and sector_of(f, t) == sector_of(e, t)]
+        peers = [
+            f
+            for f in world.known
+            if f != e and naive.peer_at(world, f, t) == naive.peer_at(world, e, t)
+        ]
         found = [r for f in peers if (r := returns(kind, f, t)) is not None]
         if not found:
             found = [r for f in world.known if f != e and (r := returns(kind, f, t)) is not None]
@@ -370,33 +384,25 @@ def test_every_trade_is_the_twins(tmp_path, seed, exit_, direction):
     found = evaluate_trades(rules, study, direction=direction, n_draws=50)
     sign = 1 if direction == "long" else -1
     parts = {
-        "discovery": (0, world.discovery_end), "holdout": (world.holdout_start, world.n_sessions - 1),
-    }  # fmt: skip
+        "discovery": (0, world.discovery_end),
+        "holdout": (world.holdout_start, world.n_sessions - 1),
+    }
     n_all = 0
     for rule in rules:
         for part, (first, last) in parts.items():
-            twin = twin_trades(world, bars, rule, first, last,
-                               lambda e, t: naive.peer_at(world, e, t), side=8e-4, sign=sign,
-                               exit_=exit_)  # fmt: skip
-            mine = found.trades.query("rule == @rule.id and part == @part")
+            twin = twin_trades(world, bars, rule, first, last, sign, exit_)
+            mine = of(found.trades, rule=rule.id, part=part)
+            columns = ["entity", "trigger", "entry", "exit"]
             rows = [
-                (
-                    e,
-                    *(
-                        int((np.datetime64(d) - np.datetime64(FIRST_DAY)).astype(int))
-                        for d in dates
-                    ),
-                )
-                for e, *dates in mine[["entity", "trigger", "entry", "exit"]].itertuples(
-                    index=False
-                )
+                (e, *(session_of(date) for date in dates))
+                for e, *dates in mine[columns].itertuples(index=False)
             ]
             assert rows == [row[:4] for row in twin]
             assert mine["gross"].tolist() == pytest.approx([row[4] for row in twin], abs=1e-7)
             assert mine["worst"].tolist() == pytest.approx([row[5] for row in twin], abs=1e-7)
             assert mine["net"].tolist() == pytest.approx([row[4] - 16e-4 for row in twin], abs=1e-7)
             n_all += len(twin)
-            row = found.rules.query("rule == @rule.id and part == @part").iloc[0]
+            row = of(found.rules, rule=rule.id, part=part).iloc[0]
             assert row["trades"] == len(twin)
             if twin:
                 net = np.array([r[4] for r in twin]) - 16e-4
@@ -417,14 +423,14 @@ def test_curve_time_in_market_and_overlap_are_recounted(traded):
     rule = book_rules(world)[0]
     found = evaluate_trades([rule], study, n_draws=50)
     for part in ("discovery", "holdout"):
-        trades = found.trades.query("part == @part")
-        curve = found.curve.query("part == @part").set_index("date")
+        trades = of(found.trades, part=part)
+        curve = of(found.curve, part=part).set_index("date")
         held = dict.fromkeys(curve.index, 0)
         for entry, leave in trades[["entry", "exit"]].itertuples(index=False):
             for date in pd.date_range(entry, leave).strftime("%Y-%m-%d"):
                 held[date] += 1
         assert curve["open"].tolist() == list(held.values())
-        row = found.rules.query("part == @part").iloc[0]
+        row = of(found.rules, part=part).iloc[0]
         assert row["most_open"] == max(held.values()) > 0
         assert row["time_in_market"] == pytest.approx(np.mean([n > 0 for n in held.values()]))
         assert row["total_net"] == pytest.approx(curve["cumulative_net"].iloc[-1])

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import hashlib
 import json
 import os
@@ -18,12 +19,16 @@ from miner.columns import CANDIDATE_COLUMNS, CONFIRMED, JOINER, REFUTED
 from miner.errors import InputError, SettingsError, TableError, explain
 from miner.evidence.lead_times import lead_times, share_caught, workload
 from miner.kernels import profiles
+from miner.price_moves import wanted_moves
+from miner.redundancy import Redundancy, redundancy
 from miner.rule_cases import RuleCase, combo_of, rule_cases, stratum_code
 from miner.settings import Study, load_study, study_from_dict
 from miner.time_split import Segment
 from miner.triggers import find_triggers
 from miner.workers import Progress, silent
 
+from .differences import BookDiff, diff_rule_books
+from .reading import read_rule_book
 from .records import (
     DIGITS,
     FORMAT,
@@ -36,6 +41,7 @@ from .records import (
     Workload,
     rule_id,
 )
+from .writing import check_free, write_rule_book
 
 STATUS_OF_VERDICT = {CONFIRMED: "candidate", REFUTED: "retired"}  # else "watch"
 HISTORY_COLUMNS = ["rule", "entity", "session", "outcome"]
@@ -44,11 +50,70 @@ PARENTS = 3
 
 @dataclass(frozen=True)
 class Made:
-    """A rule book, and the triggers so far of each of its rules: columns HISTORY_COLUMNS, where
-    ``outcome`` is "hit", "miss", or "open" for a horizon that reaches past the study."""
+    """A rule book, and what was found out on the way.
+
+    Attributes
+    ----------
+    history : the triggers so far of each rule: columns HISTORY_COLUMNS, where ``outcome`` is "hit",
+        "miss", or "open" for a horizon that reaches past the study
+    redundancy : by target, which of the rules that are not retired say the same
+    changes : from the book that was replaced, None where there was none
+    """
 
     book: RuleBook
     history: pd.DataFrame
+    redundancy: tuple[Redundancy, ...] = ()
+    changes: BookDiff | None = None
+
+
+def make_rule_book(
+    run: str | Path,
+    path: str | Path,
+    study: Study | str | Path | None = None,
+    *,
+    replace: bool = False,
+    with_overlap: bool = False,
+    n_workers: int = 1,
+    progress: Progress = silent,
+) -> Made:
+    """Make a run's rule book and write it, with its history beside it.
+
+    Where a book is replaced, the statuses and notes people gave its rules are kept, and so are
+    rules that the run did not find again.
+
+    Raises
+    ------
+    InputError : see ``rules_of``; or the file exists and may not be replaced, or is no rule book
+    """
+    path = Path(path)
+    check_free(path, replace)
+    old = read_rule_book(path) if path.exists() else None
+    made = rules_of(
+        run,
+        study,
+        book_folder=path.parent,
+        with_overlap=with_overlap,
+        n_workers=n_workers,
+        progress=progress,
+    )
+    book, history = made.book, made.history
+    if old is not None:
+        book, history = carried_over(old, book), _history_carried_over(old, path.parent, history)
+    made = dataclasses.replace(made, book=book, history=history)
+    book = write_history(made, path)
+    write_rule_book(book, path, replace=replace)
+    changes = None if old is None else diff_rule_books(old, book)
+    return dataclasses.replace(made, book=book, changes=changes)
+
+
+def _history_carried_over(old: RuleBook, folder: Path, history: pd.DataFrame) -> pd.DataFrame:
+    """The new history, with that of rules only the old book has."""
+    before = folder / old.history.source if old.history is not None else None
+    if before is None or not before.is_file():
+        return history
+    table = pd.read_csv(before, dtype=str, keep_default_na=False)
+    lost = table[~table["rule"].isin(set(history["rule"]))]
+    return pd.concat([history, lost], ignore_index=True)
 
 
 def rules_of(
@@ -56,6 +121,7 @@ def rules_of(
     study: Study | str | Path | None = None,
     *,
     book_folder: str | Path | None = None,
+    with_overlap: bool = False,
     n_workers: int = 1,
     progress: Progress = silent,
 ) -> Made:
@@ -69,6 +135,7 @@ def rules_of(
     study : its study; by default the settings in run.json, on tables found in one of the folders
         above the run's
     book_folder : where the book will be written: its paths are relative to it (default: the run's)
+    with_overlap : compare the rules that are not retired with one another
 
     Raises
     ------
@@ -112,7 +179,9 @@ def rules_of(
         run={name: origin},
         rule=rules,
     )
-    return Made(book, _history(inputs, rules, n_workers))
+    kept = [rule for rule in rules if rule.status != "retired"] if with_overlap else []
+    alike = redundancy(whole, kept, inputs.calendar.dates, n_workers=n_workers)
+    return Made(book, _history(inputs, rules, n_workers), tuple(alike))
 
 
 def write_history(made: Made, book_path: str | Path) -> RuleBook:
@@ -200,7 +269,10 @@ def study_of_run(run: Path, record: Mapping[str, Any]) -> Study:
 
 def _check_settings(run: Path, record: Mapping[str, Any], study: Study) -> None:
     now = json.loads(json.dumps(study.as_dict()))
-    for section in ("sessions", "windows", "groups", "coverage", "events", "holdout", "prices"):
+    sections = ["sessions", "windows", "groups", "coverage", "events", "holdout"]
+    if wanted_moves(study):
+        sections.append("prices")
+    for section in sections:
         if now.get(section) != record["settings"].get(section):
             raise SettingsError(
                 explain(

@@ -51,16 +51,7 @@ def write_rule_book(book: RuleBook, path: str | Path, *, replace: bool = False) 
     OutputError : the file exists and may not be replaced, or its place cannot be written
     """
     path = Path(path)
-    if path.exists() and not replace:
-        raise OutputError(
-            explain(
-                "output",
-                str(path),
-                "not exist yet",
-                "a file that does",
-                "Name another file, or allow replacing this one (--replace).",
-            )
-        )
+    check_free(path, replace)
     text = "\n".join(_lines(book)) + "\n"
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
@@ -78,6 +69,25 @@ def write_rule_book(book: RuleBook, path: str | Path, *, replace: bool = False) 
         found = f"the system's error: {error.strerror}"
         advice = "Free some space or name a file elsewhere."
         raise OutputError(explain("output", str(path), "be writable", found, advice)) from error
+
+
+def check_free(path: Path, replace: bool) -> None:
+    """Refuse early what could not be written at the end.
+
+    Raises
+    ------
+    OutputError : the file exists and may not be replaced
+    """
+    if path.exists() and not replace:
+        raise OutputError(
+            explain(
+                "output",
+                str(path),
+                "not exist yet",
+                "a file that does",
+                "Name another file, or allow replacing this one (--replace).",
+            )
+        )
 
 
 def _lines(book: RuleBook) -> Iterator[str]:

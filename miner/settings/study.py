@@ -148,4 +148,12 @@ def _warnings(study: Study) -> tuple[str, ...]:
         )
     if groups is not None and groups.pooled and groups.strata is None:
         found.append("[groups] pooled = true changes nothing without strata.")
+    prices, targets = study.prices, study.events.targets
+    has_moves = targets is None or any(target.startswith("move ") for target in targets)
+    if prices is not None and prices.moves == "extremes" and has_moves:
+        found.append(
+            '[prices] moves = "extremes": a move up starts at a low by definition, so alerts drawn '
+            "from the same prices (falls, new lows) come before it in a random walk too. For such "
+            'alerts moves = "close-to-close" is safer; see what trades on the rules earn.'
+        )
     return tuple(found)

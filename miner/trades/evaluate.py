@@ -163,7 +163,8 @@ def evaluate_trades(
         pd.DataFrame(rows, columns=RULE_COLUMNS),
         pd.concat(trades, ignore_index=True) if trades else pd.DataFrame(),
         pd.concat(curves, ignore_index=True) if curves else pd.DataFrame(),
-        study.prices.model_dump(mode="json") | {"direction": direction},
+        study.prices.model_dump(mode="json")
+        | {"direction": direction, "entry": "close" if prices.open_et is None else "open"},
         n_tried,
         tuple(warnings),
     )

@@ -25,7 +25,8 @@ def trade_lines(result: TradeTable) -> Iterator[str]:
     """The table on a screen: under each rule a line for discovery and one for the holdout."""
     settings = result.settings
     yield from textwrap.wrap(
-        "Trades on the rules: in at the open of the session after the trigger, out at the close "
+        f"Trades on the rules: in at the {settings['entry']} of the session after the trigger, out "
+        "at the close "
         "of the horizon's last session"
         + (" or at the open after the event" if settings["exit"] == "event" else "")
         + f"; net of {settings['costs_bps']:g} + {settings['slippage_bps']:g} basis points each "
