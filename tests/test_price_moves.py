@@ -246,9 +246,9 @@ def test_moves_of_real_series_are_as_long_as_they_were_measured_to_be(name):
 
 
 def test_alerts_from_the_same_prices_precede_extremes_even_in_a_random_walk():
-    """The caution of the module, put to the test: a new low is no news of a move up, and yet half as
-    many again or more follow it, since a move up starts at a low. Close-to-close moves have
-    little of that (straight falls are calm, and calm makes moves large; own simulation)."""
+    """The caution of the module, put to the test: a new low is no news of a move up, and yet half
+    as many again or more follow it, since a move up starts at a low. Close-to-close moves have
+    little or nothing of that (own simulation)."""
     rng = np.random.default_rng(1)
     close_et = 50 * np.exp(np.cumsum(rng.normal(0, 0.02, (12, 6000)), axis=1))
     before = pd.DataFrame(close_et.T).shift(1).rolling(60).min().to_numpy().T

@@ -1,8 +1,9 @@
 """Trades where prices are random walks: how often does a rule look good that cannot be?
 
-    PYTHONPATH=. python tests/trade_null.py [WORLDS]
+    PYTHONPATH=.:examples python tests/trade_null.py [WORLDS]
+    PYTHONPATH=.:examples python tests/trade_null.py moves
 
-prints the table of reports/trades.md. Companies share a market and sectors, alerts come at random
+print the tables of reports/trades.md. Companies share a market and sectors, alerts come at random
 and in spells that companies and sessions share; no alert says anything about any price. Hands on
 `null_worlds`.
 """
@@ -16,7 +17,9 @@ from itertools import combinations
 
 import numpy as np
 
+from miner.kernels.windows import mark_windows
 from miner.panel import Labels, Panel, pack_alerts, pack_coverage
+from miner.price_moves import find_moves, move_events
 from miner.prices import Prices
 from miner.rule_cases import rule_cases
 from miner.seeds import stream
@@ -38,6 +41,7 @@ class NullWorld:
     p_alone: np.ndarray
     p_all: np.ndarray
     mean_net: np.ndarray
+    n_trades: np.ndarray
     covered: np.ndarray  # the 95 % interval holds the true mean, which is minus the costs
 
 
@@ -112,12 +116,39 @@ def null_worlds(
             np.array([m.p_value for m in means]),
             p_all,
             np.array([m.mean for m in means]),
+            np.array([len(h.trades) for h in held]),
             np.array([m.low <= truth <= m.high for m in means]),
         )
 
 
+def print_moves(n_walks: int = 22, n_sessions: int = 8000) -> None:
+    """Print how much more often moves follow alerts drawn from the same random walks."""
+    import pandas as pd
+    from bar_rules import close_alerts
+
+    returns = stream(1, "walks").normal(0, 0.02, (n_walks, n_sessions))
+    close_et = 50 * np.exp(np.cumsum(returns, axis=1))
+    series_et = np.zeros(close_et.shape, dtype=np.int32)
+    prices = Prices(close_et, None, None, None, None, series_et, {}, ())
+    days = pd.bdate_range("1990-01-01", periods=n_sessions)
+    alerts, is_known = close_alerts(pd.DataFrame(close_et.T, index=days))
+    is_asked = is_known.to_numpy().T
+    print("| moves | target | alert | times as often as on any session |")
+    print("| --- | --- | --- | --- |")
+    for how in ("extremes", "close-to-close"):
+        moves = find_moves(prices, PriceSettings(source="-", moves=how))
+        for target, (entity, session) in move_events(moves)[0].items():
+            is_window = mark_windows(entity, session, n_walks, n_sessions, HORIZON)
+            for name, is_on in alerts.items():
+                lift = is_window[is_on.to_numpy().T & is_asked].mean() / is_window[is_asked].mean()
+                print(f"| {how} | {target} | {name} | {lift:.2f} |")
+
+
 def main() -> None:
-    """Print the table of the report."""
+    """Print the tables of the report."""
+    if sys.argv[1:] == ["moves"]:
+        print_moves()
+        return
     n_worlds = int(sys.argv[1]) if len(sys.argv) > 1 else 400
     print("| costs each way | own returns | rules | alone, p <= .05 | p <= .01 | 95 % interval "
           "holds the truth | worlds with any p (all tried) <= .05 | mean net |")  # fmt: skip
