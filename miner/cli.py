@@ -16,6 +16,8 @@ import click
 from miner.errors import InputError
 
 if TYPE_CHECKING:
+    from datetime import datetime
+
     from miner.workers import Progress
 
 OVERVIEW = """Find which combinations of alerts come before events more often than chance, the
@@ -118,6 +120,142 @@ def demo(folder: Path, seed: int | None, workers: int | None) -> None:
     with shown_progress() as progress:
         played = play(folder, seed=seed, n_workers=workers, progress=progress)
     show(demo_lines(played))
+
+
+class BookCommands(click.Group):
+    """A group whose first argument may be a run's folder instead of a command."""
+
+    def resolve_command(
+        self, ctx: click.Context, args: list[str]
+    ) -> tuple[str | None, click.Command | None, list[str]]:
+        if args and args[0] not in self.commands and not args[0].startswith("-"):
+            args = ["make", *args]
+        return super().resolve_command(ctx, args)
+
+
+@main.group(cls=BookCommands, subcommand_metavar="RUN | COMMAND ...")
+def rules() -> None:
+    """Make the rule book of RUN, or show and compare rule books."""
+
+
+@rules.command()
+@click.argument("run", type=click.Path(path_type=Path))
+@click.option("--output", type=click.Path(path_type=Path), default=Path("rules.toml"),
+              show_default=True, help="File to write.")  # fmt: skip
+@click.option("--study", type=click.Path(path_type=Path), default=None,
+              help="The run's study, if it has moved.")  # fmt: skip
+@click.option("--replace", is_flag=True,
+              help="Replace a rule book; statuses and notes in it are kept.")  # fmt: skip
+@workers_option
+def make(run: Path, output: Path, study: Path | None, replace: bool, workers: int | None) -> None:
+    """Write the rule book of RUN; `miner rules RUN` for short."""
+    from miner.redundancy import redundancy_lines
+    from miner.rule_book import book_lines, diff_lines
+    from miner.rule_book.making import make_rule_book
+    from miner.workers import n_default
+
+    with shown_progress() as progress:
+        made = make_rule_book(
+            run,
+            output,
+            study,
+            replace=replace,
+            with_overlap=True,
+            n_workers=workers or n_default(),
+            progress=progress,
+        )
+    show(book_lines(made.book))
+    for part in made.redundancy:
+        show(redundancy_lines(part))
+    if made.changes is not None:
+        show(diff_lines(made.changes))
+    click.echo(f"Written to {output}")
+
+
+@rules.command("show")
+@click.argument("book", type=click.Path(path_type=Path))
+def show_book(book: Path) -> None:
+    """Tell the rules of BOOK in words."""
+    from miner.rule_book import book_lines, read_rule_book
+
+    show(book_lines(read_rule_book(book)))
+
+
+@rules.command()
+@click.argument("old", type=click.Path(path_type=Path))
+@click.argument("new", type=click.Path(path_type=Path))
+def diff(old: Path, new: Path) -> None:
+    """Tell what NEW changes in OLD."""
+    from miner.rule_book import diff_lines, diff_rule_books, read_rule_book
+
+    show(diff_lines(diff_rule_books(read_rule_book(old), read_rule_book(new))))
+
+
+@main.command()
+@click.argument("book", type=click.Path(path_type=Path))
+@click.option("--alerts", required=True, help="The alert log: a path, a glob or a database URL.")
+@click.option("--query", default=None, help="Of a database.")
+@click.option("--as-of", type=click.DateTime(["%Y-%m-%d"]), default=None,
+              help="Last date that counts.  [default: that of the last alert]")  # fmt: skip
+@click.option("--format", "form", type=click.Choice(["table", "csv", "json"]), default="table",
+              show_default=True)  # fmt: skip
+def scan(book: Path, alerts: str, query: str | None, as_of: datetime | None, form: str) -> None:
+    """Tell which rules of BOOK have triggered, and which are one alert short."""
+    from miner.rule_book import read_rule_book
+    from miner.scan import scan as run
+    from miner.scan_output import scan_csv, scan_json, scan_lines
+
+    result = run(
+        read_rule_book(book),
+        {"source": alerts, "query": query} if query else alerts,
+        book_folder=book.parent,
+        as_of=None if as_of is None else as_of.date(),
+    )
+    if form == "table":
+        show(scan_lines(result))
+    else:
+        click.echo(scan_csv(result) if form == "csv" else scan_json(result), nl=False)
+
+
+@main.command()
+@click.argument("book", type=click.Path(path_type=Path))
+@click.argument("study", type=click.Path(path_type=Path))
+@click.option("--run", type=click.Path(path_type=Path), default=None,
+              help="The run of the rules: the test then allows for all it tried.")  # fmt: skip
+@click.option("--direction", type=click.Choice(["long", "short"]), default=None,
+              help="For all rules.  [default: as the target says]")  # fmt: skip
+@click.option("--output", type=click.Path(path_type=Path), default=None,
+              help="Folder for the tables.")  # fmt: skip
+@click.option("--replace", is_flag=True, help="Replace tables that are there.")
+@workers_option
+def trades(
+    book: Path,
+    study: Path,
+    run: Path | None,
+    direction: str | None,
+    output: Path | None,
+    replace: bool,
+    workers: int | None,
+) -> None:
+    """Tell what trades on the rules of BOOK would have earned, with the prices of STUDY."""
+    from miner.rule_book import read_rule_book
+    from miner.settings import load_study
+    from miner.trades import evaluate_trades, trade_lines, tried_in, write_trades
+    from miner.workers import n_default
+
+    with shown_progress() as progress:
+        settings = load_study(study)
+        result = evaluate_trades(
+            read_rule_book(book),
+            settings,
+            tried=tried_in(run, settings) if run else (),
+            direction=direction,
+            n_workers=workers or n_default(),
+            progress=progress,
+        )
+    if output is not None:
+        write_trades(result, output, replace=replace)
+    show(trade_lines(result))
 
 
 def show(lines: Iterable[str]) -> None:

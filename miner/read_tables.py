@@ -151,7 +151,11 @@ class PriceTable:
 
 
 def read_log(
-    study: Study, table: Literal["alerts", "events"], progress: Progress | None = None
+    study: Study,
+    table: Literal["alerts", "events"],
+    progress: Progress | None = None,
+    *,
+    may_have_no_rows: bool = False,
 ) -> Log:
     """Read alerts or events. `progress` is called with the rows read so far.
 
@@ -170,7 +174,7 @@ def read_log(
             is_bare=stamps.is_bare,
             is_midnight=stamps.is_midnight,
         )
-    reader.finish()
+    reader.finish(may_have_no_rows)
     entity_code, entity_names = reader.names("entity")
     type_code, type_names = reader.names("type")
     return Log(

@@ -128,8 +128,10 @@ def scan(
     book_folder = Path(book_folder)
     rules = book.rules_with(statuses)
     study = _study(book, alerts, book_folder, as_of)
-    log = read_log(study, "alerts")
-    calendar = build_calendar(study, int(log.stamp_us.min()), int(log.stamp_us.max()))
+    # a morning without alerts is no fault, but it does not say which morning it is
+    log = read_log(study, "alerts", may_have_no_rows=as_of is not None)
+    first_us, last_us = (int(log.stamp_us.min()), int(log.stamp_us.max())) if len(log) else (0, 0)
+    calendar = build_calendar(study, first_us, last_us)
     reader = _Reader(study, log, calendar, rules)
     return reader.scan(_history(book, book_folder))
 

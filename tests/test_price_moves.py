@@ -159,6 +159,32 @@ def test_a_major_move_is_one_by_its_own_numbers():
         assert (counter[:-1] <= 1.5 * volatility).all()
 
 
+@pytest.mark.parametrize("threshold", [0.3, 1.5, 2.5])
+def test_the_major_moves_are_all_those_of_the_twin(threshold):
+    """Every inner move that is large enough, and no other: in loops from the definition."""
+    close_et = walk(9, n=260)
+    expected, unfinished = [], 0
+    for e, close in enumerate(close_et):
+        returns = np.diff(np.log(close))
+        volatility = [
+            returns[i - 20 : i].std(ddof=1) if i >= 20 else np.nan for i in range(returns.size)
+        ]
+        moves = twin(returns[20:], volatility[20:])
+        for number, (start, stop, known, size) in enumerate(moves):
+            limit = threshold * volatility[start + 20] * (stop - start) ** 0.5
+            if number == 0 or abs(size) < limit:
+                continue
+            if known < 0:
+                unfinished += 1
+            else:
+                expected.append((e, start + 21, stop + 20, known + 21))
+    keys = {"threshold": threshold, "volatility_sessions": 20}
+    found = find_moves(prices_of(close_et), settings(**keys))
+    assert [row[:4] for row in rows(found)] == expected
+    assert found.n_unfinished == unfinished
+    assert len(expected) > 5
+
+
 def test_up_and_down_are_mirror_images_and_the_price_level_does_not_matter():
     close_et = walk(5)
     one = find_moves(prices_of(close_et), settings())

@@ -114,6 +114,11 @@ def test_greedy_can_be_beaten_and_the_smallest_set_beats_it():
     assert smallest_cover(caught, triggers, 1.0) == ((1, 2), True)
 
 
+def test_one_busy_rule_is_fewer_than_two_quiet_ones():
+    caught = np.array([[1, 1], [1, 0], [0, 1], [1, 1]], dtype=bool)
+    assert smallest_cover(caught, np.array([100, 1, 1, 90]), 1.0) == ((3,), True)
+
+
 @pytest.mark.parametrize("seed", [3, 5])
 def test_a_studys_rules_are_compared_as_the_twin_counts_them(seed, tmp_path):
     world = random_world(seed, groups="strata", coverage=False, pooled=True, two_targets=False)

@@ -208,6 +208,11 @@ def test_bootstrap_errors_are_those_of_many_draws(matrix):
     draws = stationary_draws(stream(1, "test"), len(matrix), BLOCK, 4000)
     means = np.array([matrix[draw].mean(axis=0) for draw in draws])
     assert bootstrap_errors(matrix, BLOCK) == pytest.approx(means.std(axis=0), rel=0.05)
+    few = matrix[:10]
+    draws_of_few = stationary_draws(stream(2, "test"), 10, 5, 60_000)
+    assert bootstrap_errors(few, 5) == pytest.approx(
+        few[draws_of_few].mean(axis=1).std(axis=0), rel=0.02
+    )
     run_on = (np.diff(draws, axis=1) % len(matrix) == 1).mean()
     assert run_on == pytest.approx(1 - 1 / BLOCK + 1 / BLOCK / len(matrix), abs=0.005)
 

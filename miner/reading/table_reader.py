@@ -110,16 +110,18 @@ class TableReader:
         may_be_empty = name in self._may_be_empty
         return lambda value: fault_of_name(value, may_be_empty) or "cannot be used"
 
-    def finish(self) -> None:
+    def finish(self, may_have_no_rows: bool = False) -> None:
         """Raise `TableError` for bad rows that are not set aside, or when no row is left."""
         self.bad.refuse_any()
+        if may_have_no_rows and not self.rows_read:
+            return
         if not any(len(part) for part in self._parts.get("entity", ())):
             found = f"{self.rows_read} rows, none of them readable" if self.rows_read else "no rows"
             raise TableError(explain(f"[{self.wanted.table}]", "rows", "be there", found))
 
     def column(self, name: str) -> np.ndarray:
         """Return one kept column whole, [n]. Its parts are let go: ask once."""
-        return np.concatenate(self._parts.pop(name))
+        return np.concatenate(self._parts.pop(name, [np.zeros(0, dtype=np.int64)]))
 
     def names(self, name: str) -> tuple[np.ndarray, tuple[str, ...]]:
         """Return int32 codes [n] into sorted names, and those names. Ask once."""
