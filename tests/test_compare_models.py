@@ -50,7 +50,9 @@ def test_features_are_known_at_their_session(parts):
     now = int(np.median(session))
     kept = session <= now
     cells = entity[kept], session[kept]
-    cut = compare_models._case(type(late)(late.panel.until(now + 1), late.first, now), "upset", study)
+    cut = compare_models._case(
+        type(late)(late.panel.until(now + 1), late.first, now), "upset", study
+    )
     assert kept.sum() > 1000
     np.testing.assert_array_equal(features.of(case, cells), features.of(cut, cells))
 

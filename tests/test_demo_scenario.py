@@ -148,9 +148,14 @@ def test_same_seed_writes_the_same_bytes(demo, tmp_path):
     write_demo(other, seed=demo.truth.seed + 1)
     written = sorted(path.name for path in demo.folder.iterdir())
     assert written == [
-        "alerts.parquet", "coverage.csv", "events.csv", "groups.csv", "prices.parquet", "study.toml",
+        "alerts.parquet",
+        "coverage.csv",
+        "events.csv",
+        "groups.csv",
+        "prices.parquet",
+        "study.toml",
         "truth.json",
-    ]  # fmt: skip
+    ]
     for name in written:
         assert (again / name).read_bytes() == (demo.folder / name).read_bytes(), name
     assert (other / "alerts.parquet").read_bytes() != (demo.folder / "alerts.parquet").read_bytes()

@@ -229,8 +229,14 @@ def test_spells_totals_and_what_is_sure(seed, share):
     assert (kept_rc == left_rc).all()
     entity, session = np.nonzero(is_open)
     q = margins.cell_rates(
-        entity, session, group, margins.single_groups(group), np.ones(5), np.ones((2, 12)),
-        row_order, col_order,
+        entity,
+        session,
+        group,
+        margins.single_groups(group),
+        np.ones(5),
+        np.ones((2, 12)),
+        row_order,
+        col_order,
     )
     is_left = left_rc[entity, column[entity, session]]
     assert (q[is_left] == 0.5).all()
