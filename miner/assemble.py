@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import difflib
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
@@ -20,7 +21,17 @@ from miner.panel import (
     pack_alerts,
     pack_coverage,
 )
-from miner.read_tables import Log, SpanTable, read_coverage, read_groups, read_log
+from miner.price_moves import Moves, find_moves, move_events, wanted_moves
+from miner.prices import place_prices
+from miner.read_tables import (
+    Log,
+    PriceTable,
+    SpanTable,
+    read_coverage,
+    read_groups,
+    read_log,
+    read_prices,
+)
 from miner.session_calendar import SessionCalendar, build_calendar
 from miner.settings import Study
 from miner.workers import Progress, silent
@@ -58,6 +69,7 @@ class Inputs:
     midnight: dict[str, tuple[int, int]]
     set_aside: pd.DataFrame
     fingerprints: dict[str, str]
+    moves: Moves | None = None
 
 
 def assemble(study: Study, progress: Progress = silent) -> Inputs:
@@ -90,11 +102,16 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
 
     progress("placing on sessions")
     spans = [table for table in (groups, coverage) if table is not None]
-    known: Sequence[Log | SpanTable] = spans or [alert_log, event_log]
-    entity_names = tuple(sorted({name for table in known for name in _used_names(table)}))
+    sources: Sequence[Log | SpanTable] = spans or [alert_log, event_log]
+    entity_names = tuple(sorted({name for table in sources for name in _used_names(table)}))
     alerts = _code(alert_log, entity_names, calendar)
     events = _code(event_log, entity_names, calendar)
-    targets = _targets(study, event_log.type_names)
+    move_targets = wanted_moves(study)
+    targets = _targets(study, event_log.type_names, move_targets)
+    moves, price_table = None, None
+    if move_targets:
+        progress("finding price moves")
+        price_table, moves = _moves(study, entity_names, calendar)
     panel = Panel(
         entity_names,
         alert_log.type_names,
@@ -107,7 +124,11 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
             len(alert_log.type_names),
             n_sessions,
         ),
-        {target: _events_of(events, event_log.type_names.index(target)) for target in targets},
+        {
+            target: _events_of(events, event_log.type_names.index(target))
+            for target in targets
+            if target not in move_targets
+        },
         *pack_coverage(
             _spans(coverage, "type", entity_names, calendar) if coverage else None,
             len(entity_names),
@@ -117,6 +138,13 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
         *_groups(study, groups, entity_names, calendar),
         study.testing.margins,
     )
+    if moves is not None:
+        found, known_at = move_events(moves)
+        panel = replace(
+            panel,
+            events=panel.events | {target: found[target] for target in move_targets},
+            known={target: known_at[target] for target in move_targets},
+        )
     read = {"alerts": alert_log, "events": event_log, "groups": groups, "coverage": coverage}
     counts = {
         name: {"rows": table.rows_read, "unreadable": len(table.set_aside)}
@@ -130,7 +158,10 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
         counts[name] |= {"outside calendar": log.n_outside, "unknown entity": log.n_unknown}
         counts[name]["used"] = log.entity.size
         counts[name]["repeats"] = log.entity.size - _n_distinct(log, len(names), n_sessions)
-    aside = [t.set_aside for t in read.values() if t is not None and len(t.set_aside)]
+    if price_table is not None:
+        counts["prices"] = {"rows": price_table.rows_read, "unreadable": len(price_table.set_aside)}
+    tables = [*(table for table in read.values() if table is not None)]
+    aside = [t.set_aside for t in (*tables, price_table) if t is not None and len(t.set_aside)]
     return Inputs(
         study,
         calendar,
@@ -147,10 +178,11 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
         pd.concat(aside, ignore_index=True) if aside else alert_log.set_aside.iloc[:0],
         {
             path: digest
-            for t in read.values()
+            for t in (*tables, price_table)
             if t is not None
             for path, digest in t.fingerprints.items()
         },
+        moves,
     )
 
 
@@ -190,19 +222,35 @@ def _events_of(events: CodedLog, code: int) -> Events:
     return distinct_events(events.entity[mine], events.session[mine])
 
 
-def _targets(study: Study, names: tuple[str, ...]) -> tuple[str, ...]:
+def _moves(
+    study: Study, entity_names: tuple[str, ...], calendar: SessionCalendar
+) -> tuple[PriceTable, Moves]:
+    """The prices table, and the major moves in it of the entities that are known."""
+    table = read_prices(study)
+    if table is None or study.prices is None:
+        raise TypeError("price moves are wanted of a study with [prices] only")
+    return table, find_moves(
+        place_prices(table, entity_names, calendar, study.prices), study.prices
+    )
+
+
+def _targets(
+    study: Study, names: tuple[str, ...], move_targets: tuple[str, ...]
+) -> tuple[str, ...]:
     wanted = study.events.targets
     if wanted is None:
-        return names
-    missing = [target for target in wanted if target not in names]
+        return tuple(sorted({*names, *move_targets}))
+    missing = [target for target in wanted if target not in (*names, *move_targets)]
     if missing:
+        near = difflib.get_close_matches(missing[0], names, 1)
         raise SettingsError(
             explain(
                 "[events] targets",
                 ", ".join(missing),
                 "be types of the event log",
                 f"types {', '.join(names[:20]) or 'none'}",
-                "Correct the spelling, or leave targets out to hunt for every type.",
+                (f'Did you mean "{near[0]}"? ' if near else "")
+                + "Correct the spelling, or leave targets out to hunt for every type.",
             )
         )
     return tuple(sorted(set(wanted)))

@@ -68,12 +68,14 @@ def hunt(
 ) -> None:
     """Find rules in STUDY (a settings file) and judge them on later data."""
     from miner.hunting import hunt as run
+    from miner.settings import load_study
     from miner.summary import hunt_lines
 
     with shown_progress() as progress:
+        settings = load_study(study)
         folder = output or study.with_name(f"{study.stem}-run")
         result = run(
-            study,
+            settings,
             folder,
             n_workers=workers,
             replace=replace,
@@ -114,7 +116,10 @@ def report(run: Path, show_it: bool) -> None:
 @click.option("--seed", type=click.IntRange(min=0), default=None, help="Another invented world.")
 @workers_option
 def demo(folder: Path, seed: int | None, workers: int | None) -> None:
-    """Write an invented scenario into FOLDER, hunt in it, and compare with what was planted."""
+    """Write an invented scenario into FOLDER, hunt in it, and compare with what was planted.
+
+    An earlier demo in FOLDER is written over.
+    """
     from miner.demo.play import demo_lines, play
 
     with shown_progress() as progress:

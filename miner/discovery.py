@@ -179,15 +179,15 @@ def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int]) -> float:
 
     The median, over combinations that share no type with a rule, of (hits - mean of draws) / sd of
     draws, against the same of each draw. Small where something that is not held fixed drives both
-    sides. Where rules leave under ten combinations, all are taken.
+    sides; 1 where rules leave under ten combinations to tell it by.
     """
     combos = found.case.unit.triggers.combos
     taken = {k for row in rule_rows for k in combos[row]}
     mean, spread = drawn.hits_cr.mean(axis=1), drawn.hits_cr.std(axis=1)
-    telling = (mean >= 1.0) & (spread > 0)
-    apart = telling & np.array([taken.isdisjoint(combo) for combo in combos], dtype=bool)
-    some = np.flatnonzero(apart if apart.sum() >= FEW_APART else telling)
-    if some.size == 0:
+    apart = (mean >= 1.0) & (spread > 0)
+    apart &= np.array([taken.isdisjoint(combo) for combo in combos], dtype=bool)
+    some = np.flatnonzero(apart)
+    if some.size < FEW_APART:
         return 1.0
     observed = np.median((found.hits[some] - mean[some]) / spread[some])
     middle_r = [

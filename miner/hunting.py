@@ -27,6 +27,7 @@ from miner.explain_away import Rule
 from miner.holdout import Outcome, judge_holdout
 from miner.input_warnings import find_warnings
 from miner.nulls.plain_shuffle import PlainShuffleNull
+from miner.price_moves import moves_summary, moves_table
 from miner.search import Search, codes_of, placebo_rules, search
 from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
@@ -60,6 +61,7 @@ class Hunt:
     evidence : what ``evidence.json`` holds: what the report shows beyond the tables
     record : what ``run.json`` holds: settings, counts, placebo, steps, versions, timings
     set_aside : unreadable rows that the study asked to set aside
+    moves : the price moves that were targets, or None
     folder : the run's folder, None if nothing was written
     """
 
@@ -71,6 +73,7 @@ class Hunt:
     record: dict[str, Any]
     evidence: dict[str, Any]
     set_aside: pd.DataFrame
+    moves: pd.DataFrame | None = None
     folder: Path | None = None
 
 
@@ -279,6 +282,7 @@ def hunt(
             }
             for number, (until, start, stop) in enumerate(folds, start=1)
         ],
+        "moves": None if inputs.moves is None else moves_summary(inputs.moves),
         "models": models,
         "seconds": stages.seconds,
     }
@@ -291,6 +295,9 @@ def hunt(
         record,
         evidence.as_dict(),
         inputs.set_aside,
+        None
+        if inputs.moves is None
+        else moves_table(inputs.moves, panel.entity_names, inputs.calendar.dates),
         None if output is None else Path(output),
     )
     if output is not None:

@@ -41,6 +41,8 @@ class Panel:
     class_k : int64 [types], the coverage class of each type
     strata, peers : labels of the entity-sessions; ``peers`` always labels every one
     law : how an entity's and a date's share combine in the margins null (``miner.columns``)
+    known : for targets whose events are known only later than their session (a price move, by
+        its end), int32 [events], the session they are known at
     """
 
     entity_names: tuple[str, ...]
@@ -53,6 +55,7 @@ class Panel:
     strata: Labels | None
     peers: Labels
     law: str = ODDS
+    known: dict[str, np.ndarray] = field(default_factory=dict)
 
     @property
     def n_entities(self) -> int:
@@ -60,8 +63,15 @@ class Panel:
         return len(self.entity_names)
 
     def until(self, stop: int) -> Panel:
-        """The panel as it would have been with the calendar cut before session ``stop``."""
+        """The panel as it would have been with the calendar cut before session ``stop``.
+
+        Events that were known only later are not there.
+        """
         words = bits.n_words(stop)
+        is_kept = {
+            target: (session < stop) & (self.known.get(target, session) < stop)
+            for target, (_, session) in self.events.items()
+        }
 
         def cut(bits_exw: np.ndarray) -> np.ndarray:
             kept = np.ascontiguousarray(bits_exw[:, :, :words])
@@ -77,7 +87,7 @@ class Panel:
             stop,
             cut(self.alert_ekw),
             {
-                target: (entity[session < stop], session[session < stop])
+                target: (entity[is_kept[target]], session[is_kept[target]])
                 for target, (entity, session) in self.events.items()
             },
             cut(self.cover_eqw),
@@ -85,6 +95,7 @@ class Panel:
             None if self.strata is None else cut_labels(self.strata),
             cut_labels(self.peers),
             self.law,
+            {target: session[is_kept[target]] for target, session in self.known.items()},
         )
 
 

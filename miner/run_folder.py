@@ -53,7 +53,9 @@ def check_free(folder: Path, replace: bool) -> None:
         )
     try:
         folder.parent.mkdir(parents=True, exist_ok=True)
-        writable = os.access(folder.parent, os.W_OK)
+        # to make a folder is the only proof that one can be made
+        os.rmdir(tempfile.mkdtemp(prefix=".probe-", dir=folder.parent))
+        writable = True
     except OSError:
         writable = False
     if not writable:
@@ -76,8 +78,9 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
     OutputError : the files cannot be written; nothing is left behind
     """
     check_free(folder, replace)
-    aside = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
+    aside = None
     try:
+        aside = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
         aside.chmod(0o777 & ~_umask())
         _write_table(result.candidates, aside / "candidates.csv")
         result.candidates.to_parquet(aside / "candidates.parquet", index=False)
@@ -86,6 +89,8 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
         _write_table(result.walk_forward, aside / "walk_forward.csv")
         if result.plain_shuffle is not None:
             _write_table(result.plain_shuffle, aside / "plain_shuffle.csv")
+        if result.moves is not None:
+            _write_table(result.moves, aside / "moves.csv")
         if len(result.set_aside):
             _write_table(result.set_aside, aside / "set_aside.csv")
         text = json.dumps(_plain(result.record), indent=1, ensure_ascii=False, allow_nan=False)
@@ -116,7 +121,8 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
             )
         ) from error
     finally:
-        shutil.rmtree(aside, ignore_errors=True)
+        if aside is not None:
+            shutil.rmtree(aside, ignore_errors=True)
 
 
 def _umask() -> int:

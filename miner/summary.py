@@ -102,7 +102,10 @@ def hunt_lines(result: Hunt) -> Iterator[str]:
         + (f"; {', '.join(others)})" if others else ")"),
     )
     if counts["rules"]:
-        yield entry("Rules", f"{counts['rules']} account for all that passed")
+        yield entry(
+            "Rules",
+            f"{counts['rules']} account{'s' * (counts['rules'] == 1)} for all that passed",
+        )
         yield entry("Confirmed", f"{counts['confirmed']} of them held on the holdout")
     placebo = record["placebo"]
     if placebo["worlds"]:

@@ -7,6 +7,7 @@ import datetime as dt
 import io
 import json
 from collections import Counter
+from dataclasses import replace
 from itertools import combinations
 
 import numpy as np
@@ -169,24 +170,25 @@ def test_a_view_that_is_settled_tells_the_truth_from_there_on(world):
     reader = scan_module._Reader(
         study, read_log(study, "alerts"), build_calendar(study, 0, 0), book.rule
     )
-    rule = book.rule[0]
     settled = unsettled = 0
-    for first in range(0, len(dates) - 25, 3):
+    for first in range(len(dates) - 12):
         view = reader._view(first)
-        found = {
-            (r.id, view.panel.entity_names[e], t + first)
-            for r in book.rule
-            for e, t in zip(*(part.tolist() for part in view.triggers(r)), strict=True)
-        }
-        for start in range(rule.lookback, len(dates) - first, 2):
-            if view.is_settled(start):
+        for rule in book.rules_with(["candidate"])[::3]:  # each combination, in all strata
+            alone = replace(view, rules=(rule,))
+            found = {
+                (rule.id, view.panel.entity_names[e], t + first)
+                for e, t in zip(*(part.tolist() for part in alone.triggers(rule)), strict=True)
+            }
+            for start in range(rule.lookback, len(dates) - first, 5):
+                if not alone.is_settled(start):
+                    unsettled += 1
+                    continue
                 settled += 1
-                mine = {x for x in found if x[2] >= first + start}
-                assert mine == {x for x in expected if x[2] >= first + start}
-            else:
-                unsettled += 1
-    assert settled > 50 or rule.rest > 8  # long rests leave chains that are never cut
-    assert unsettled > 5 or rule.rest < 3
+                later = first + start
+                mine = {x for x in found if x[2] >= later}
+                assert mine == {x for x in expected if x[0] == rule.id and x[2] >= later}
+    assert settled > 200
+    assert unsettled > 20 or book.rule[0].rest < 3
 
 
 def test_nothing_after_the_day_changes_the_answer(world):
