@@ -133,6 +133,7 @@ class BookCommands(click.Group):
     def resolve_command(
         self, ctx: click.Context, args: list[str]
     ) -> tuple[str | None, click.Command | None, list[str]]:
+        """Take what is no command and no option for a run to make a book of."""
         if args and args[0] not in self.commands and not args[0].startswith("-"):
             args = ["make", *args]
         return super().resolve_command(ctx, args)

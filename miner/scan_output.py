@@ -37,7 +37,7 @@ CSV_COLUMNS = [
 
 
 def scan_json(result: Scan) -> str:
-    """The scan as JSON text, as the module describes it."""
+    """The scan as JSON text, as the module describes it; it ends with a line's end."""
     record = {
         "format": FORMAT,
         "as_of": result.as_of,
@@ -48,7 +48,7 @@ def scan_json(result: Scan) -> str:
         "hits": [_hit(hit) for hit in result.hits],
         "one_short": [_short(short) for short in result.one_short],
     }
-    return json.dumps(record, indent=1, ensure_ascii=False, allow_nan=False)
+    return json.dumps(record, indent=1, ensure_ascii=False, allow_nan=False) + "\n"
 
 
 def scan_csv(result: Scan) -> str:

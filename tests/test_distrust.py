@@ -63,3 +63,20 @@ def test_high_base_rates_point_to_the_hazard_law(tmp_path):
     drivers = {"base_rate": 0.2, "busy_names": 0.5}
     assert "hazard" in warnings_of(tmp_path / "odds", 0, **drivers)
     assert "hazard" not in warnings_of(tmp_path / "hazard", 0, {"margins": "hazard"}, **drivers)
+
+
+def test_a_small_family_around_one_rule_is_no_reason_for_distrust(tmp_path):
+    """With five types hardly anything shares no type with the rule, so nothing can be told."""
+    for seed in range(2):
+        world = worlds.make_world(
+            seed, n_entities=120, n_sessions=500, n_types=5, base_rate=0.04, alerts_per_type=900,
+            planted=(worlds.Plant((0, 1), 0.4, 250),),
+        )  # fmt: skip
+        study = worlds.write_world(
+            world,
+            tmp_path / str(seed),
+            settings={"testing": {"permutations": 300, "placebo": 0}, "holdout": {"folds": 0}},
+        )
+        result = hunt(study)
+        assert len(result.rules) >= 1
+        assert not [text for text in result.record["warnings"] if "leans" in text]

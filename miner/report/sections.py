@@ -88,6 +88,7 @@ def _heat(ratio: float) -> str:
 
 
 def funnel(run: Run) -> Iterator[tuple[str, int, Markup, str]]:
+    """The steps from the family to the confirmed rules, each with its count."""
     counts, settings = run.record["counts"], run.record["settings"]
     adjust = settings["testing"]["adjust"]
     family = max(1, counts["family"])
