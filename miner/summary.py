@@ -164,6 +164,7 @@ def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]]) -> Iterator
     table = rules.to_dict("records")
     width = min(LONGEST_STRATUM, max(len("stratum"), *(len(rule["stratum"]) for rule in table)))
     yield _columns(
+        "",
         width,
         "stratum",
         "verdict",
@@ -175,17 +176,15 @@ def rule_lines(rules: pd.DataFrame, steps: Sequence[dict[str, Any]]) -> Iterator
         if key in told:
             continue
         told.add(key)
-        yield wrapped(
-            f"{rule['combination']} -> {rule['target']}", f"{rule['rule_order']:>3}. ", " " * 5
-        )
+        yield wrapped(f"{rule['combination']} -> {rule['target']}", "", "     ")
         for same, step in zip(table, steps, strict=True):
             if (same["target"], same["combination"]) == key:
                 yield from _stratum_lines(same, step, width)
 
 
-def _columns(width: int, stratum: str, verdict: str, numbers: Sequence[str]) -> str:
+def _columns(order: str, width: int, stratum: str, verdict: str, numbers: Sequence[str]) -> str:
     cells = "".join(f"  {cell:>{w}}" for cell, w in zip(numbers, NUMBER_WIDTHS, strict=True))
-    return f"     {cut(stratum, width):<{width}}  {verdict:<12}{cells}"
+    return f"{order:>4} {cut(stratum, width):<{width}}  {verdict:<12}{cells}"
 
 
 def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> Iterator[str]:
@@ -202,7 +201,8 @@ def _stratum_lines(rule: dict[str, Any], step: dict[str, Any], width: int) -> It
         else ("-", "0", "-", "-")
     )
     discovery = percent(rule["precision"]), f"{rule['triggers']:,}"
-    yield _columns(width, rule["stratum"], rule["verdict"], (*holdout, *discovery))
+    order = f"{rule['rule_order']}."
+    yield _columns(order, width, rule["stratum"], rule["verdict"], (*holdout, *discovery))
     notes = []
     if rule["sharpens"]:
         p = step["holdout"]["p_sharper"]
