@@ -70,6 +70,7 @@ class Inputs:
     set_aside: pd.DataFrame
     fingerprints: dict[str, str]
     moves: Moves | None = None
+    price_warnings: tuple[str, ...] = ()
 
 
 def assemble(study: Study, progress: Progress = silent) -> Inputs:
@@ -103,15 +104,16 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
     progress("placing on sessions")
     spans = [table for table in (groups, coverage) if table is not None]
     sources: Sequence[Log | SpanTable] = spans or [alert_log, event_log]
-    entity_names = tuple(sorted({name for table in sources for name in _used_names(table)}))
+    entity_names = tuple(sorted({name for table in sources for name in used_names(table)}))
     alerts = _code(alert_log, entity_names, calendar)
     events = _code(event_log, entity_names, calendar)
     move_targets = wanted_moves(study)
     targets = _targets(study, event_log.type_names, move_targets)
     moves, price_table = None, None
+    price_warnings: tuple[str, ...] = ()
     if move_targets:
         progress("finding price moves")
-        price_table, moves = _moves(study, entity_names, calendar)
+        price_table, moves, price_warnings = _moves(study, entity_names, calendar)
     panel = Panel(
         entity_names,
         alert_log.type_names,
@@ -130,12 +132,12 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
             if target not in move_targets
         },
         *pack_coverage(
-            _spans(coverage, "type", entity_names, calendar) if coverage else None,
+            spans_of(coverage, "type", entity_names, calendar) if coverage else None,
             len(entity_names),
             alert_log.type_names,
             n_sessions,
         ),
-        *_groups(study, groups, entity_names, calendar),
+        *labels_of(study, groups, entity_names, calendar),
         study.testing.margins,
     )
     if moves is not None:
@@ -183,10 +185,12 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
             for path, digest in t.fingerprints.items()
         },
         moves,
+        price_warnings,
     )
 
 
-def _used_names(table: Log | SpanTable) -> list[str]:
+def used_names(table: Log | SpanTable) -> list[str]:
+    """Entities that rows of the table are about."""
     return [table.entity_names[i] for i in np.unique(table.entity_code)]
 
 
@@ -196,14 +200,14 @@ def _n_distinct(log: CodedLog, n_types: int, n_sessions: int) -> int:
     return int(np.count_nonzero(np.diff(key))) + (key.size > 0)
 
 
-def _code_map(names: tuple[str, ...], known: tuple[str, ...]) -> np.ndarray:
+def code_map(names: tuple[str, ...], known: tuple[str, ...]) -> np.ndarray:
     """Place in ``known`` of each name, -1 where it is not there."""
     place = {name: i for i, name in enumerate(known)}
     return np.array([place.get(name, -1) for name in names] or [-1], dtype=np.int32)
 
 
 def _code(log: Log, entity_names: tuple[str, ...], calendar: SessionCalendar) -> CodedLog:
-    entity = _code_map(log.entity_names, entity_names)[log.entity_code]
+    entity = code_map(log.entity_names, entity_names)[log.entity_code]
     session = calendar.session_of(log.stamp_us, log.is_bare_date)
     is_inside = (session >= 0) & (session < len(calendar.dates))
     is_known = entity >= 0
@@ -224,20 +228,30 @@ def _events_of(events: CodedLog, code: int) -> Events:
 
 def _moves(
     study: Study, entity_names: tuple[str, ...], calendar: SessionCalendar
-) -> tuple[PriceTable, Moves]:
-    """The prices table, and the major moves in it of the entities that are known."""
+) -> tuple[PriceTable, Moves, tuple[str, ...]]:
+    """The prices table, the major moves in it of the entities that are known, and warnings."""
     table = read_prices(study)
     if table is None or study.prices is None:
         raise TypeError("price moves are wanted of a study with [prices] only")
-    return table, find_moves(
-        place_prices(table, entity_names, calendar, study.prices), study.prices
-    )
+    prices = place_prices(table, entity_names, calendar, study.prices)
+    return table, find_moves(prices, study.prices), prices.warnings
 
 
 def _targets(
     study: Study, names: tuple[str, ...], move_targets: tuple[str, ...]
 ) -> tuple[str, ...]:
     wanted = study.events.targets
+    both = sorted({*names} & {*move_targets})
+    if both:
+        raise SettingsError(
+            explain(
+                "[prices] moves",
+                ", ".join(both),
+                "not be types of the event log too",
+                "both",
+                'Rename the events, or set moves = "off".',
+            )
+        )
     if wanted is None:
         return tuple(sorted({*names, *move_targets}))
     missing = [target for target in wanted if target not in (*names, *move_targets)]
@@ -256,12 +270,13 @@ def _targets(
     return tuple(sorted(set(wanted)))
 
 
-def _spans(
+def spans_of(
     table: SpanTable, label: str, entity_names: tuple[str, ...], calendar: SessionCalendar
 ) -> Spans:
+    """A table's spans on the calendar, with one of its labels."""
     first = calendar.span_start(table.start_us, table.start_is_bare)
     last = calendar.span_end(table.end_us, table.end_is_bare)
-    entity = _code_map(table.entity_names, entity_names)[table.entity_code]
+    entity = code_map(table.entity_names, entity_names)[table.entity_code]
     first = np.maximum(first, 0)
     last = np.minimum(last, len(calendar.dates) - 1)
     kept = (first <= last) & (entity >= 0)
@@ -274,14 +289,15 @@ def _spans(
     )
 
 
-def _groups(
+def labels_of(
     study: Study, groups: SpanTable | None, entity_names: tuple[str, ...], calendar: SessionCalendar
 ) -> tuple[Labels | None, Labels]:
+    """Strata (None without) and peers of every entity-session."""
     n_entities, n_sessions = len(entity_names), len(calendar.dates)
     labelled: dict[str, Labels] = {}
     if groups is not None and study.groups is not None:
         for column in study.groups.label_columns:
-            spans = _spans(groups, column, entity_names, calendar)
+            spans = spans_of(groups, column, entity_names, calendar)
             if len(spans.names) > MOST_LABELS:
                 raise TableError(
                     explain(

@@ -26,6 +26,7 @@ def find_warnings(
 ) -> Iterator[str]:
     """Every warning about the inputs; ``early`` and ``late`` are discovery and holdout."""
     yield from _stamps(inputs)
+    yield from (f"prices: {warning}" for warning in inputs.price_warnings)
     yield from _rows(inputs)
     yield from jumps(inputs.panel.type_names, inputs.alerts.type, inputs.alerts.session, dates)
     yield from _events(inputs, early, late)

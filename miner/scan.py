@@ -23,7 +23,7 @@ from zoneinfo import ZoneInfo
 
 import numpy as np
 
-from miner.assemble import _code_map, _groups, _spans, _used_names
+from miner.assemble import code_map, labels_of, spans_of, used_names
 from miner.errors import SettingsError, TableError, explain
 from miner.panel import Panel, pack_alerts, pack_coverage
 from miner.read_tables import Log, SpanTable, read_coverage, read_groups, read_log
@@ -172,9 +172,9 @@ class _Reader:
         session = calendar.session_of(log.stamp_us, log.is_bare_date)
         spans = [table for table in (self.groups, self.coverage) if table is not None]
         tables: Sequence[Log | SpanTable] = spans or [log]
-        known = {name for table in tables for name in _used_names(table)}
+        known = {name for table in tables for name in used_names(table)}
         is_known = np.array([name in known for name in log.entity_names] or [False])
-        kind = _code_map(log.type_names, self.types)[log.type_code]
+        kind = code_map(log.type_names, self.types)[log.type_code]
         is_inside = (session >= 0) & (session <= self.last)
         self.n_inside = int(is_inside.sum())
         self.n_unknown = int((is_inside & ~is_known[log.entity_code]).sum())
@@ -240,7 +240,7 @@ class _Reader:
             len(self.types),
             n_sessions,
         )
-        spans = _spans(self.coverage, "type", names, calendar) if self.coverage else None
+        spans = spans_of(self.coverage, "type", names, calendar) if self.coverage else None
         panel = Panel(
             names,
             self.types,
@@ -248,7 +248,7 @@ class _Reader:
             alert_ekw,
             {},
             *pack_coverage(spans, len(names), self.types, n_sessions),
-            *_groups(self.study, self.groups, names, calendar),
+            *labels_of(self.study, self.groups, names, calendar),
         )
         everywhere = pack_coverage(None, len(names), self.types, n_sessions)
         return View(panel, replace(panel, cover_eqw=everywhere[0], class_k=everywhere[1]),
