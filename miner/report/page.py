@@ -157,7 +157,7 @@ def _distrust(run: Run, rules: list[dict[str, Any]]) -> Iterator[Markup]:
     if apart["own_timing_only"]:
         yield Markup(
             "{} pass only when each entity's history is shifted as a whole, and not once the "
-            "calendar of their peers is held: shared seasons and shocks, not information."
+            "calendar of their peers is held: most likely shared seasons and shocks."
         ).format(words.some(apart["own_timing_only"], "combination"))
     for warning in (*run.record["warnings"], *run.evidence["warnings"]):
         yield Markup("{}").format(warning)
