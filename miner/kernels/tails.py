@@ -226,25 +226,13 @@ def tilt(q, log_odds):
 
 
 @kernel
-def match_total(q, total):
-    """The rates, with one odds ratio that makes them add up to ``total`` where that can be."""
-    is_inside = (q > 0.0) & (q < 1.0)
-    inside = q[is_inside]
-    left = total - np.sum(q >= 1.0)
-    if left <= 0.0 or left >= inside.size:
-        return q
-    return tilt(q, tilt_to(inside, left, 0.0)[0])
-
-
-@kernel
 def log_tail_ranks(row, offset_c, q, hits_cr):
     """log P(X >= hits) for the drawn hits of each combination: float32 [rows, draws].
 
-    ``hits_cr`` int32 [rows, draws]. A common yardstick makes draws of different combinations
-    comparable: the observed world's rates, with one odds ratio a combination that makes them
-    expect the mean of its draws. (Exchanging single events pulls bursts of events apart, so that
-    draws hold more windows than were observed, up to a quarter more, and would otherwise look
-    unusual all by themselves.)
+    ``hits_cr`` int32 [rows, draws]. The rates are the observed world's, for draws as for what was
+    observed: a test by drawing is valid with any yardstick as long as it is the same for both.
+    (One that follows each combination's draws gains power where events come in bursts, but takes
+    the closed form at its word: noise then passed 38 % of hunts where base rates are high.)
     """
     n_rows, n_draws = hits_cr.shape
     log_p_cr = np.zeros((n_rows, n_draws), dtype=np.float32)
@@ -253,8 +241,7 @@ def log_tail_ranks(row, offset_c, q, hits_cr):
         last = np.int64(hits_cr[i].max())
         if last == 0:
             continue
-        own = match_total(q[offset_c[row[i]] : offset_c[row[i] + 1]], hits_cr[i].mean())
-        table = tail_table(own, first, last)
+        table = tail_table(q[offset_c[row[i]] : offset_c[row[i] + 1]], first, last)
         for x in range(table.size):
             table[x] = math.log(max(table[x], TINY))
         for r in range(n_draws):
