@@ -129,7 +129,7 @@ combination's draws; *whole runs* draws by the trial form of section 2.
 *Own mean* was not adopted. With p-values by the odds form it holds only where the closed form does:
 over 125 whole hunts of "calendar, busy, common" with nothing to find, 38 % reported a rule at a
 nominal 5 %, against 4 % with one yardstick for draws and observed alike (section 6), which is valid
-whatever the yardstick. What that costs where events come in bursts is the power in the columns above.""",
+whatever the yardstick. What that costs where events come in bursts stands in the columns above.""",
     "intervals": """## 10. Intervals for a precision
 
 Share of 95 % intervals that hold the true precision, when triggers hang together by entity and by
