@@ -238,9 +238,9 @@ def test_the_workbook_holds_every_value_and_nothing_that_runs(hostile):
 @pytest.fixture(scope="module")
 def chromium():
     """A headless browser."""
-    sync_api = pytest.importorskip("playwright.sync_api")
-    if not Path(CHROMIUM).exists():
-        pytest.skip("no chromium")
+    from playwright import sync_api
+
+    assert Path(CHROMIUM).exists(), "-m browser needs Debian's chromium"
     with sync_api.sync_playwright() as playwright:
         browser = playwright.chromium.launch(executable_path=CHROMIUM, args=list(FLAGS))
         yield browser
