@@ -16,7 +16,7 @@ from miner.time_split import Segment
 
 Combo = tuple[int, ...]
 
-ENTITIES_A_BLOCK = 64
+BLOCKS = 32
 MOST_COMBINATIONS = 5_000_000
 
 
@@ -55,18 +55,44 @@ class TriggerTable:
         padded = [combo + (-1,) * (size - len(combo)) for combo in self.combos]
         return np.array(padded, dtype=np.int64).reshape(-1, size)
 
-    def until(self, stop_t: int, min_triggers: int) -> TriggerTable:
+    def until(self, stop_t: int, min_triggers: int, n_workers: int = 1) -> TriggerTable:
         """The table as it stood before session ``stop_t``: what had enough triggers by then."""
-        is_before = self.session < stop_t
-        count_c = np.add.reduceat(np.append(is_before, False), self.offset_c[:-1], dtype=np.int64)
-        is_kept_c = count_c >= max(min_triggers, 1)
-        is_kept = is_before & np.repeat(is_kept_c, self.count_c)
-        return TriggerTable(
-            tuple(combo for combo, kept in zip(self.combos, is_kept_c, strict=True) if kept),
-            np.concatenate([[0], np.cumsum(count_c[is_kept_c])]).astype(np.int64),
-            self.entity[is_kept],
-            self.session[is_kept],
-        )
+        n_rows = len(self.combos)
+        count_c = np.zeros(n_rows, dtype=np.int64)
+        parts = workers.blocks(n_rows, -(-max(n_rows, 1) // BLOCKS))
+
+        def count(part: tuple[int, int]) -> None:
+            first, last = part
+            kernels.count_before(
+                self.offset_c[first : last + 1], self.session, stop_t, count_c[first:last]
+            )
+
+        workers.in_order(count, parts, n_workers)
+        rows = np.flatnonzero(count_c >= max(min_triggers, 1))
+        offset_c = _offsets(count_c[rows])
+        entity = np.empty(offset_c[-1], dtype=np.int32)
+        session = np.empty(offset_c[-1], dtype=np.int32)
+
+        def take(part: tuple[int, int]) -> None:
+            mine = slice(*np.searchsorted(rows, part))
+            kernels.take_before(
+                rows[mine],
+                self.offset_c,
+                self.entity,
+                self.session,
+                stop_t,
+                offset_c[:-1][mine],
+                entity,
+                session,
+            )
+
+        workers.in_order(take, parts, n_workers)
+        return TriggerTable(tuple(self.combos[row] for row in rows), offset_c, entity, session)
+
+
+def _offsets(counts: np.ndarray) -> np.ndarray:
+    """Where each of parts of these sizes starts when they are joined, and the end: int64."""
+    return np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
 
 
 def no_triggers() -> TriggerTable:
@@ -75,34 +101,44 @@ def no_triggers() -> TriggerTable:
     return TriggerTable((), np.zeros(1, dtype=np.int64), empty, empty)
 
 
-def _rows(combos: Sequence[Combo]) -> tuple[np.ndarray, np.ndarray]:
-    """Combinations of one size as the kernel takes them: sorted rows and where prefixes change."""
-    combo_ck = np.array(combos, dtype=np.int64)
-    n, size = combo_ck.shape
-    jump_ck = np.empty((n, size), dtype=np.int64)
-    changes = np.zeros(n, dtype=bool)  # row differs from the one before in its first d + 1 types
-    changes[0] = True
-    for d in range(size):
-        changes[1:] |= combo_ck[1:, d] != combo_ck[:-1, d]
-        starts = np.append(np.flatnonzero(changes), n)
-        jump_ck[:, d] = starts[np.searchsorted(starts, np.arange(n), side="right")]
-    return combo_ck, jump_ck
+@dataclass(frozen=True)
+class _Tree:
+    """Combinations sorted by size, then by types, with the leading part of each among them."""
+
+    nodes: tuple[Combo, ...]
+    type_n: np.ndarray
+    child_n: np.ndarray
+    n_roots: int
+    size: int
 
 
-Stream = tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]
+def _tree(combos: Sequence[Combo]) -> _Tree:
+    """The tree of combinations, their leading parts added where they are missing."""
+    parts = {combo[:d] for combo in combos for d in range(1, len(combo) + 1)}
+    nodes = tuple(sorted(parts, key=lambda combo: (len(combo), combo)))
+    count_n = np.zeros(len(nodes), dtype=np.int64)
+    place = {node: n for n, node in enumerate(nodes)}
+    for node in nodes:
+        if len(node) > 1:
+            count_n[place[node[:-1]]] += 1
+    n_roots = sum(len(node) == 1 for node in nodes)
+    return _Tree(
+        nodes,
+        np.array([node[-1] for node in nodes], dtype=np.int32),
+        n_roots + _offsets(count_n),
+        n_roots,
+        max(map(len, nodes), default=0),
+    )
+
+
+Stream = tuple[np.ndarray, np.ndarray, np.ndarray]
 
 
 def _find(
-    segment: Segment,
-    combos: Sequence[Combo],
-    lookback: int,
-    rest: int,
-    horizon: int,
-    n_workers: int,
+    segment: Segment, tree: _Tree, lookback: int, rest: int, horizon: int, n_workers: int
 ) -> list[Stream]:
-    """Eligible triggers of combinations of one size, block by block of entities."""
+    """Eligible triggers of a tree's combinations, block by block of entities."""
     panel = segment.panel
-    combo_ck, jump_ck = _rows(combos)
     first_t, stop_t = max(segment.first, lookback - 1), segment.last - horizon + 1
 
     def find(block: tuple[int, int]) -> Stream:
@@ -111,8 +147,10 @@ def _find(
             panel.alert_ekw[part],
             panel.cover_eqw[part],
             panel.class_k,
-            combo_ck,
-            jump_ck,
+            tree.type_n,
+            tree.child_n,
+            tree.n_roots,
+            tree.size,
             block[0],
             lookback,
             rest,
@@ -120,48 +158,58 @@ def _find(
             stop_t,
         )
 
-    return workers.in_order(find, workers.blocks(panel.n_entities, ENTITIES_A_BLOCK), n_workers)
+    return workers.in_order(find, _entity_blocks(panel), n_workers)
 
 
-def _in_stratum(panel: Panel, stratum_code: int | None, stream: Stream) -> np.ndarray | None:
-    if stratum_code is None or panel.strata is None:
-        return None
-    return panel.strata.code_et[stream[1], stream[2]] == stratum_code
+def _entity_blocks(panel: Panel) -> list[tuple[int, int]]:
+    return workers.blocks(panel.n_entities, max(16, -(-panel.n_entities // BLOCKS)))
 
 
 def _table(
-    levels: list[tuple[Sequence[Combo], list[Stream]]],
+    tree: _Tree,
+    streams: Sequence[Stream],
     panel: Panel,
     stratum_code: int | None,
+    is_wanted: np.ndarray | None,
     min_triggers: int,
+    n_workers: int,
 ) -> TriggerTable:
-    """One stratum's table, of the combinations with enough triggers in it."""
-    combos: list[Combo] = []
-    counts: list[np.ndarray] = []
-    kept_levels = []
-    for level, streams in levels:
-        masks = [_in_stratum(panel, stratum_code, stream) for stream in streams]
-        count_c = np.zeros(len(level), dtype=np.int64)
-        for stream, mask in zip(streams, masks, strict=True):
-            chosen = stream[0] if mask is None else stream[0][mask]
-            count_c += np.bincount(chosen, minlength=len(level))
-        is_kept = count_c >= min_triggers
-        kept_levels.append((streams, masks, is_kept))
-        combos += [combo for combo, kept in zip(level, is_kept, strict=True) if kept]
-        counts.append(count_c[is_kept])
-    offset_c = np.concatenate([[0], np.cumsum(np.concatenate(counts))]).astype(np.int64)
+    """One stratum's table, of the wanted combinations with enough triggers in it."""
+    labels = panel.peers if stratum_code is None or panel.strata is None else panel.strata
+    label = -1 if stratum_code is None or panel.strata is None else stratum_code
+    n_nodes = len(tree.nodes)
+
+    def count(stream: Stream) -> np.ndarray:
+        return kernels.count_triggers(*stream, labels.code_et, label, panel.n_sessions, n_nodes)
+
+    count_bn = np.stack(workers.in_order(count, streams, n_workers))
+    count_n = count_bn.sum(axis=0)
+    is_kept = count_n >= min_triggers
+    if is_wanted is not None:
+        is_kept &= is_wanted
+    rows = np.flatnonzero(is_kept)
+    offset_c = _offsets(count_n[rows])
+    # each block writes its triggers of a combination after those of the blocks before it
+    next_bn = np.full(count_bn.shape, -1, dtype=np.int64)
+    next_bn[:, rows] = offset_c[:-1] + np.cumsum(count_bn[:, rows], axis=0) - count_bn[:, rows]
     entity = np.empty(offset_c[-1], dtype=np.int32)
     session = np.empty(offset_c[-1], dtype=np.int32)
-    next_c = offset_c[:-1].copy()
-    n_before = 0
-    for streams, masks, is_kept in kept_levels:
-        row_c = np.where(is_kept, n_before + np.cumsum(is_kept) - 1, -1)
-        n_before += int(is_kept.sum())
-        for (combo, e, t, _), mask in zip(streams, masks, strict=True):
-            if mask is not None:
-                combo, e, t = combo[mask], e[mask], t[mask]
-            kernels.scatter(combo, e, t, row_c, next_c, entity, session)
-    return TriggerTable(tuple(combos), offset_c, entity, session)
+
+    def sort(b: int) -> None:
+        kernels.scatter(*streams[b], labels.code_et, label, next_bn[b], entity, session)
+
+    workers.in_order(sort, range(len(streams)), n_workers)
+    return TriggerTable(tuple(tree.nodes[n] for n in rows), offset_c, entity, session)
+
+
+def _on_counts(panel: Panel, combos: Sequence[Combo], lookback: int, n_workers: int) -> np.ndarray:
+    """Sessions on which each of combinations of one size (sorted) is on: int64."""
+    combo_ck = np.array(combos, dtype=np.int64)
+
+    def count(block: tuple[int, int]) -> np.ndarray:
+        return kernels.count_on(panel.alert_ekw[slice(*block)], lookback, combo_ck)
+
+    return np.sum(workers.in_order(count, _entity_blocks(panel), n_workers), axis=0)
 
 
 def _grow(combos: Sequence[Combo], max_types: int) -> list[Combo]:
@@ -216,20 +264,21 @@ def find_family(
     ------
     SettingsError : more combinations of one size than can be looked at
     """
-    levels: list[tuple[Sequence[Combo], list[Stream]]] = []
-    level: list[Combo] = [(k,) for k in range(len(segment.panel.type_names))]
-    for size in range(1, max_size + 1):
+    panel = segment.panel
+    level: list[Combo] = [(k,) for k in range(len(panel.type_names))]
+    combos = list(level)
+    for _ in range(1, max_size):
         if not level:
             break
-        streams = _find(segment, level, lookback, rest, horizon, n_workers)
-        levels.append((level, streams))
-        if size < max_size:
-            on_count_c = np.sum([stream[3] for stream in streams], axis=0)
-            level = _grow(
-                [level[c] for c in np.flatnonzero(on_count_c >= min_triggers)], MOST_COMBINATIONS
-            )
+        on_count_c = _on_counts(panel, level, lookback, n_workers)
+        level = _grow(
+            [level[c] for c in np.flatnonzero(on_count_c >= min_triggers)], MOST_COMBINATIONS
+        )
+        combos += level
+    tree = _tree(combos)
+    streams = _find(segment, tree, lookback, rest, horizon, n_workers)
     return {
-        name: _table(levels, segment.panel, code, min_triggers)
+        name: _table(tree, streams, panel, code, None, min_triggers, n_workers)
         for name, code in stratum_codes.items()
     }
 
@@ -245,11 +294,10 @@ def find_triggers(
     n_workers: int = 1,
 ) -> TriggerTable:
     """Eligible triggers of given combinations, in sorted order, however few they are."""
-    wanted = sorted(set(combos), key=lambda combo: (len(combo), combo))
-    levels: list[tuple[Sequence[Combo], list[Stream]]] = []
-    for size in sorted({len(combo) for combo in wanted}):
-        level = [combo for combo in wanted if len(combo) == size]
-        levels.append((level, _find(segment, level, lookback, rest, horizon, n_workers)))
-    if not levels:
+    if not combos:
         return no_triggers()
-    return _table(levels, segment.panel, stratum_code, 0)
+    tree = _tree(combos)
+    wanted = set(combos)
+    is_wanted = np.array([node in wanted for node in tree.nodes])
+    streams = _find(segment, tree, lookback, rest, horizon, n_workers)
+    return _table(tree, streams, segment.panel, stratum_code, is_wanted, 0, n_workers)
