@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import difflib
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
 
+from miner import memory_estimate, table_warnings
+from miner.columns import JOINER
 from miner.errors import SettingsError, TableError, explain
 from miner.panel import (
     Events,
@@ -37,6 +39,7 @@ from miner.settings import Study
 from miner.workers import Progress, silent
 
 MOST_LABELS = 32_000
+MOST_NAMED = 5
 
 
 @dataclass(frozen=True)
@@ -56,7 +59,11 @@ class CodedLog:
 
 @dataclass(frozen=True)
 class Inputs:
-    """What a study's tables hold, on its calendar."""
+    """What a study's tables hold, on its calendar.
+
+    ``midnight``: per log, stamps at midnight, of how many.
+    ``table_warnings``: what is odd in the tables; ``clock_notes``: what to know of their clocks.
+    """
 
     study: Study
     calendar: SessionCalendar
@@ -71,6 +78,8 @@ class Inputs:
     fingerprints: dict[str, str]
     moves: Moves | None = None
     price_warnings: tuple[str, ...] = ()
+    table_warnings: tuple[str, ...] = ()
+    clock_notes: tuple[str, ...] = ()
 
 
 def assemble(study: Study, progress: Progress = silent) -> Inputs:
@@ -85,6 +94,7 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
     progress("reading events")
     event_log = read_log(study, "events")
     groups, coverage = read_groups(study), read_coverage(study)
+    _check_types(alert_log.type_names)
     stamps = [log.stamp_us for log in (alert_log, event_log) if log.stamp_us.size]
     if not stamps:
         raise TableError(
@@ -114,6 +124,15 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
     if move_targets:
         progress("finding price moves")
         price_table, moves, price_warnings = _moves(study, entity_names, calendar)
+    memory_estimate.refuse(
+        memory_estimate.of_panel(
+            len(entity_names),
+            n_sessions,
+            len(alert_log.type_names),
+            len(alert_log),
+            1 if coverage is None else len(coverage.label_names["type"]),
+        )
+    )
     panel = Panel(
         entity_names,
         alert_log.type_names,
@@ -186,12 +205,55 @@ def assemble(study: Study, progress: Progress = silent) -> Inputs:
         },
         moves,
         price_warnings,
+        tuple(_odd_rows(alert_log, event_log, groups, coverage, entity_names, calendar)),
+        tuple(_clock_notes(study, (alert_log, event_log), calendar)),
     )
+
+
+def _odd_rows(
+    alerts: Log,
+    events: Log,
+    groups: SpanTable | None,
+    coverage: SpanTable | None,
+    entity_names: tuple[str, ...],
+    calendar: SessionCalendar,
+) -> Iterator[str]:
+    for log in (alerts, events):
+        yield from table_warnings.mixed_clocks(log, calendar.timezone)
+    yield from table_warnings.alike_names("entities", entity_names)
+    yield from table_warnings.alike_names("alert types", alerts.type_names)
+    yield from table_warnings.alike_names("event types", events.type_names)
+    for log in (alerts, events):
+        yield from table_warnings.unknown_entities(log, entity_names)
+    for table in (groups, coverage):
+        if table is not None:
+            yield from table_warnings.empty_spans(table, calendar)
+    if groups is not None:
+        yield from table_warnings.rival_labels(groups)
+    if coverage is not None:
+        yield from table_warnings.coverage_types(coverage, alerts.type_names)
+
+
+def _clock_notes(study: Study, logs: Sequence[Log], calendar: SessionCalendar) -> Iterator[str]:
+    if "timezone" not in study.sessions.model_fields_set:
+        for log in logs:
+            yield from table_warnings.naive_note(log, calendar.timezone)
 
 
 def used_names(table: Log | SpanTable) -> list[str]:
     """Entities that rows of the table are about."""
     return [table.entity_names[i] for i in np.unique(table.entity_code)]
+
+
+def _check_types(names: tuple[str, ...]) -> None:
+    """A type that reads like a combination would be taken for one."""
+    wrong = [
+        name for name in names if JOINER.join(("x", name, "x")).split(JOINER) != ["x", name, "x"]
+    ]
+    if wrong:
+        rule = f'not read like a combination, whose types are joined by "{JOINER}"'
+        found = ", ".join(f'"{name}"' for name in wrong[:MOST_NAMED])
+        raise TableError(explain("[alerts]", "type", rule, found, "Rename it, say with a slash."))
 
 
 def _n_distinct(log: CodedLog, n_types: int, n_sessions: int) -> int:

@@ -46,6 +46,14 @@ class Check:
     power: pd.DataFrame
     warnings: tuple[str, ...]
 
+    def __repr__(self) -> str:
+        said = self.record
+        return (
+            f"Check({said['study']!r}, {said['first']} to {said['last']}: {said['entities']:,} "
+            f"entities, {len(self.types):,} alert types, family {said['family']:,}, "
+            f"{len(self.warnings)} warnings)"
+        )
+
 
 def check(
     study: Study | str | Path,
@@ -95,7 +103,11 @@ def check(
         _types(inputs),
         targets,
         _power(targets, family, study),
-        (*study.warnings, *find_warnings(inputs, early, late, calendar.dates)),
+        (
+            *study.warnings,
+            *inputs.clock_notes,
+            *find_warnings(inputs, early, late, calendar.dates),
+        ),
     )
 
 

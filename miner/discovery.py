@@ -11,9 +11,15 @@ from miner import workers
 from miner.adjust import benjamini_hochberg, benjamini_yekutieli, step_down_min_p
 from miner.event_windows import types_before_events
 from miner.kernels import hits as hit_kernels
-from miner.kernels import tails
 from miner.nulls.exchanges import Exchanger
-from miner.nulls.margins import ROWS_A_BLOCK, Margins, cannot_pass, fit_margins, judge_hits
+from miner.nulls.margins import (
+    ROWS_A_BLOCK,
+    Margins,
+    cannot_pass,
+    fit,
+    judge_hits,
+    tally,
+)
 from miner.proposals import count_windows, propose
 from miner.units import Case
 from miner.workers import Progress, silent
@@ -30,7 +36,7 @@ class Found:
     ----------
     n_proposed : int, combinations frequent before events, in the family or not
     is_proposed : bool [family]
-    margins, rates : the fitted null, and its rate at every trigger
+    margins : the fitted null
     hits, expected, variance, p : observed hits and what the null says; p = 1 if not proposed
     """
 
@@ -38,7 +44,6 @@ class Found:
     n_proposed: int
     is_proposed: np.ndarray
     margins: Margins
-    rates: np.ndarray
     hits: np.ndarray
     expected: np.ndarray
     variance: np.ndarray
@@ -53,6 +58,10 @@ class Found:
     def size(self) -> int:
         """Size of the case's family."""
         return self.is_proposed.size
+
+    def rates_of(self, row: int) -> np.ndarray:
+        """The null's rate at each trigger of one combination: float64."""
+        return self.margins.rates(*self.case.unit.triggers.of(row))
 
 
 def find(
@@ -84,23 +93,16 @@ def find(
         is_proposed = count_windows(is_seen_vk, case.unit.triggers.combo_ck) >= min_hits
         n_proposed = int(is_proposed.sum())
     table, panel = case.unit.triggers, case.unit.segment.panel
-    margins = fit_margins(
-        case.unit.is_open_et, case.is_window_et, panel.peers, start, n_workers, panel.law
-    )
-    rates = margins.rates(table.entity, table.session)
-    everything = np.ones(rates.size, dtype=bool)
-    every_row = np.arange(len(combos))
-    _, hits, expected, variance = hit_kernels.tally(
-        every_row, table.offset_c, rates, case.is_hit, everything
-    )
+    margins = fit(case.unit.cells, case.window_ew, start, n_workers, panel.law)
+    _, hits, expected, variance = tally(table, margins, case.window_ew, n_workers=n_workers)
     p = np.ones(len(combos))
     rows = np.flatnonzero(is_proposed)
     asked = hits[rows]
     if level is not None:
         sure = cannot_pass(asked, expected[rows], variance[rows], level)
         asked = np.where(sure, 0, asked)
-    p[rows] = judge_hits(rows, table.offset_c, rates, asked, everything, n_workers)
-    return Found(case, n_proposed, is_proposed, margins, rates, hits, expected, variance, p)
+    p[rows] = judge_hits(rows, table, margins, asked, n_workers=n_workers)
+    return Found(case, n_proposed, is_proposed, margins, hits, expected, variance, p)
 
 
 class Adjuster:
@@ -164,8 +166,13 @@ def draw(
     def rank(block: tuple[int, int]) -> np.ndarray:
         part = slice(*block)
         rows = np.arange(*block)
-        return tails.log_tail_ranks(
-            rows, table.offset_c, found.rates, np.ascontiguousarray(hits_cr[part])
+        return hit_kernels.log_tail_ranks(
+            rows,
+            table.offset_c,
+            table.entity,
+            table.session,
+            found.margins.table,
+            np.ascontiguousarray(hits_cr[part]),
         )
 
     blocks = workers.blocks(found.size, ROWS_A_BLOCK)

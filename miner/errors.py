@@ -5,7 +5,8 @@
         ├── SettingsError      study.toml, or the dictionary given in its place
         ├── TableError         a table: alerts, events, groups, coverage, prices
         ├── CalendarError      the sessions
-        └── OutputError        the place results are written to
+        ├── OutputError        the place results are written to
+        └── LedgerError        the ledger, or what is to be entered in it
 
 Anything else that reaches the command line is a fault of the tool (exit status 1).
 """
@@ -37,10 +38,22 @@ class OutputError(InputError):
     """Results cannot be written where they were asked to go."""
 
 
+class LedgerError(InputError):
+    """The ledger cannot be opened, read or written, or an entry is not what its kind must be."""
+
+
 def explain(where: str, what: str, rule: str, found: str, advice: str = "") -> str:
     """Return the message every error uses: where, which rule, what was found, what to try.
 
     `rule` completes "must ...", `found` completes "got ...", `advice` is whole sentences or "".
+    The message is one line, whatever stands in the names and values it tells of.
     """
     message = f"`{where}`: `{what}` must {rule}; got {found}."
-    return f"{message} {advice}" if advice else message
+    return printable(f"{message} {advice}" if advice else message)
+
+
+def printable(text: str) -> str:
+    """Return a text from a file with everything that could steer a terminal spelled out."""
+    if text.isprintable():
+        return text
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)

@@ -7,13 +7,18 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from miner import workers
 from miner.adjust import benjamini_hochberg
 from miner.columns import JOINER
 from miner.discovery import Adjuster, Found
+from miner.kernels import bits
 from miner.kernels import hits as kernels
-from miner.nulls.margins import cannot_pass, fit_margins, judge_hits
+from miner.nulls.margins import cannot_pass, fit, judge_hits, tally
+from miner.open_cells import OpenCells
 from miner.sharper import sharper_p
 from miner.triggers import Combo
+
+TRIGGERS_A_BLOCK = 1_000_000
 
 
 @dataclass(frozen=True)
@@ -64,9 +69,9 @@ class _State:
         self.level = level
         self.n_workers = n_workers
         self.rows = found.rows
-        self.is_left = np.ones(found.rates.size, dtype=bool)
-        self.is_open_et = found.case.unit.is_open_et.copy()
-        self.margins, self.rates, self.p = found.margins, found.rates, found.p
+        self.is_left = np.ones(found.case.unit.triggers.entity.size, dtype=bool)
+        self.open_ew = bits.pack_flags(found.case.unit.is_open_et)
+        self.margins, self.p = found.margins, found.p
         self.n = found.case.unit.triggers.count_c
         self.hits, self.expected = found.hits, found.expected
         self.excess = _excess(found.hits, found.expected, found.variance)
@@ -75,17 +80,14 @@ class _State:
         """Set aside the neighbourhood of a rule's remaining triggers, refit, judge the rest."""
         case = self.found.case
         unit, table = case.unit, case.unit.triggers
-        entity, session = self.triggers(row)
-        kernels.close_around(self.is_open_et, entity, session, unit.horizon)
-        self.is_left &= kernels.look_up(table.entity, table.session, self.is_open_et)
         panel = unit.segment.panel
-        self.margins = fit_margins(
-            self.is_open_et, case.is_window_et, panel.peers, self.margins, self.n_workers, panel.law
-        )
-        self.rates = self.margins.rates(table.entity, table.session)
-        everything = np.arange(self.found.size)
-        self.n, self.hits, self.expected, variance = kernels.tally(
-            everything, table.offset_c, self.rates, case.is_hit, self.is_left
+        entity, session = self.triggers(row)
+        kernels.close_around(self.open_ew, entity, session, unit.horizon, panel.n_sessions)
+        self._drop_closed()
+        cells = OpenCells(bits.unpack(self.open_ew, panel.n_sessions), panel.peers)
+        self.margins = fit(cells, case.window_ew, self.margins, self.n_workers, panel.law)
+        self.n, self.hits, self.expected, variance = tally(
+            table, self.margins, case.window_ew, self.is_left, self.n_workers
         )
         self.excess = _excess(self.hits, self.expected, variance)
         hits = self.hits[self.rows]
@@ -94,13 +96,20 @@ class _State:
             skip |= cannot_pass(hits, self.expected[self.rows], variance[self.rows], self.level)
         self.p = np.ones(self.found.size)
         self.p[self.rows] = judge_hits(
-            self.rows,
-            table.offset_c,
-            self.rates,
-            np.where(skip, 0, hits),
-            self.is_left,
-            self.n_workers,
+            self.rows, table, self.margins, np.where(skip, 0, hits), self.is_left, self.n_workers
         )
+
+    def _drop_closed(self) -> None:
+        """Triggers on cells that are open no more do not count any longer."""
+        table = self.found.case.unit.triggers
+
+        def drop(block: tuple[int, int]) -> None:
+            part = slice(*block)
+            kernels.keep_open(
+                table.entity[part], table.session[part], self.open_ew, self.is_left[part]
+            )
+
+        workers.in_order(drop, workers.blocks(self.is_left.size, TRIGGERS_A_BLOCK), self.n_workers)
 
     def triggers(self, row: int) -> tuple[np.ndarray, np.ndarray]:
         """Remaining triggers of one combination."""
@@ -199,7 +208,7 @@ def _pick(
             for key in passing
             if key[0] == i
             and set(combos[key[1]]) < set(combos[row])
-            and sharper_p(state.found.case, state.rates, state.is_left, row, key[1]) > fdr
+            and sharper_p(state.found.case, state.margins, state.is_left, row, key[1]) > fdr
         ]
         if not parts:
             break
@@ -224,20 +233,19 @@ def _sharpen(
         f = found[rule.case]
         table = f.case.unit.triggers
         small = set(table.combos[rule.row])
-        everything = np.arange(f.size)
-        n_left, *_ = kernels.tally(everything, table.offset_c, f.rates, f.case.is_hit, left[base])
+        n_left = kernels.count_flags(table.offset_c, left[base])
         for row, combo in enumerate(table.combos):
             if small < set(combo):
                 p_of.pop((base, row), None)
                 if n_left[row] >= min_triggers and (base, row) not in done:
                     p_of[base, row] = (
-                        sharper_p(f.case, f.rates, left[base], row, rule.row)
+                        sharper_p(f.case, f.margins, left[base], row, rule.row)
                         if f.is_proposed[row]
                         else 1.0
                     )
 
     for base, rule in enumerate(rules):
-        left[base] = np.ones(found[rule.case].rates.size, dtype=bool)
+        left[base] = np.ones(found[rule.case].case.unit.triggers.entity.size, dtype=bool)
         test(base)
     while p_of:
         keys = sorted(p_of)
@@ -261,7 +269,7 @@ def _sharpen(
             if rules[place].sharpens is None:
                 rules[place] = replace(rules[place], sharpens=base, p_sharper=float(p[best]))
         else:
-            rates, n_hits = f.rates[part][is_left], int(f.case.is_hit[part][is_left].sum())
+            rates, n_hits = f.rates_of(row)[is_left], int(f.case.is_hit[part][is_left].sum())
             expected, spread = float(rates.sum()), float(np.sqrt((rates * (1 - rates)).sum()))
             rules.append(
                 Rule(

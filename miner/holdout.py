@@ -125,4 +125,4 @@ def least_passing(rates: np.ndarray, level: float) -> int:
 
 def _sharper(unit: Judged, larger: int, smaller: int) -> float:
     everything = np.ones(unit.rates.size, dtype=bool)
-    return sharper_p(unit.case, unit.rates, everything, larger, smaller)
+    return sharper_p(unit.case, unit.margins, everything, larger, smaller)

@@ -7,6 +7,7 @@ import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass, field
+from dataclasses import replace as replace_in
 from importlib.metadata import version
 from pathlib import Path
 from typing import Any
@@ -33,11 +34,11 @@ from miner.run_record import (
     step_of,
     walk_table,
 )
-from miner.search import codes_of, placebo_rules, search
+from miner.search import codes_of, families_of, families_until, placebo_rules, search
 from miner.settings import Study, load_study
 from miner.time_split import discovery_slice, holdout_slice
 from miner.units import bare_cases
-from miner.walk_forward import walk_forward
+from miner.walk_forward import plan, walk_forward
 from miner.workers import Progress, silent
 
 PACKAGES = (
@@ -79,6 +80,13 @@ class Hunt:
     set_aside: pd.DataFrame
     moves: pd.DataFrame | None = None
     folder: Path | None = None
+
+    def __repr__(self) -> str:
+        counts = self.record["counts"]
+        return (
+            f"Hunt({self.record['study']!r}: {len(self.candidates):,} candidates, "
+            f"{counts['rules']:,} rules, {counts['confirmed']:,} confirmed, folder {self.folder})"
+        )
 
 
 @dataclass
@@ -136,6 +144,7 @@ def hunt(
     n_workers: int | None = None,
     replace: bool = False,
     compare: bool = False,
+    inputs: Inputs | None = None,
     progress: Progress = silent,
 ) -> Hunt:
     """Find the combinations of alerts that precede events, and judge them on later data.
@@ -147,6 +156,7 @@ def hunt(
     n_workers : threads; the answer does not depend on it
     replace : put the new folder in the place of one that exists
     compare : fit classifiers too, and set their precision on the holdout beside the rules'
+    inputs : the study's tables, where they have been read; default: they are read
     progress : called with the name of each stage as it begins, and with the share done of some
 
     Raises
@@ -162,13 +172,19 @@ def hunt(
     windows, testing = study.windows, study.testing
 
     with stages.stage("reading"):
-        inputs = assemble(study, progress)
+        inputs = assemble(study, progress) if inputs is None else replace_in(inputs, study=study)
         last, first = split_sessions(inputs)
     panel = inputs.panel
     early = discovery_slice(panel, last)
     late = holdout_slice(panel, first, panel.n_sessions - 1)
+    folds = plan(panel.n_sessions, study)
+    with stages.stage("triggers of every combination"):
+        # label-blind: found once, up to the latest session any discovery here looks at
+        latest = max([last, *(until for until, _, _ in folds)])
+        families = families_of(discovery_slice(panel, latest), study, n_workers)
     with stages.stage("searching"):
-        found = search(early, inputs.targets, study, progress=progress, n_workers=n_workers)
+        own = families_until(families, last, study, n_workers)
+        found = search(early, inputs.targets, study, own, progress=progress, n_workers=n_workers)
     with stages.stage("placebo worlds"):
         placebo = placebo_rules(found, study, n_workers, progress)
     rules = found.chosen()
@@ -185,7 +201,7 @@ def hunt(
     with stages.stage("own timing and intervals"):
         candidates = candidates_table(found, outcomes, n_workers)
     with stages.stage("walk-forward"):
-        folds, fold_rules = walk_forward(panel, inputs.targets, study, n_workers)
+        fold_rules = walk_forward(panel, inputs.targets, study, folds, families, n_workers)
         quarters = by_quarter(panel, inputs.calendar.dates, rules, study, n_workers)
     models = None
     if compare:

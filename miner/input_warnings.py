@@ -7,7 +7,11 @@ from collections.abc import Iterator
 import numpy as np
 
 from miner.assemble import Inputs
+from miner.leaks import leaks
 from miner.nulls.margins import fit_margins
+from miner.nulls.unsettled import unsettled
+from miner.panel import Labels
+from miner.table_warnings import named
 from miner.units import Case
 
 JUMP = 2.5  # a type's monthly count, before against after
@@ -18,7 +22,6 @@ FEW_EVENTS_HOLDOUT = 10
 SMALL_PEER_GROUP = 5
 RARE_PEER_GROUP = 10
 LITTLE_CHANCE = 0.5
-MOST_NAMED = 5
 
 
 def find_warnings(
@@ -26,17 +29,28 @@ def find_warnings(
 ) -> Iterator[str]:
     """Every warning about the inputs; ``early`` and ``late`` are discovery and holdout."""
     yield from _stamps(inputs)
+    yield from inputs.table_warnings
     yield from (f"prices: {warning}" for warning in inputs.price_warnings)
     yield from _rows(inputs)
     yield from jumps(inputs.panel.type_names, inputs.alerts.type, inputs.alerts.session, dates)
     yield from _events(inputs, early, late)
     for case in early:
-        yield from _peers(case)
+        yield from _peers(case, dates)
+    windows = inputs.study.windows
+    yield from leaks(
+        inputs.panel, _labels(inputs), lookback=windows.lookback, horizon=windows.horizon
+    )
 
 
-def _named(names: list[str]) -> str:
-    more = f" and {len(names) - MOST_NAMED} more" if len(names) > MOST_NAMED else ""
-    return ", ".join(names[:MOST_NAMED]) + more
+def _labels(inputs: Inputs) -> dict[str, Labels]:
+    """The groups' labels in use, by column."""
+    groups, panel = inputs.study.groups, inputs.panel
+    labels: dict[str, Labels] = {}
+    if groups is not None and groups.peers is not None:
+        labels[groups.peers] = panel.peers
+    if groups is not None and groups.strata is not None and panel.strata is not None:
+        labels[groups.strata] = panel.strata
+    return labels
 
 
 def _stamps(inputs: Inputs) -> Iterator[str]:
@@ -105,10 +119,12 @@ def _events(inputs: Inputs, early: list[Case], late: list[Case]) -> Iterator[str
     for a, b in zip(early, late, strict=True):
         where = f"target {a.target!r}, stratum {a.unit.stratum!r}"
         if a.events[0].size < FEW_EVENTS_DISCOVERY:
-            yield f"{where}: only {a.events[0].size} events in discovery; little can be found."
+            n = a.events[0].size
+            yield f"{where}: only {n} event{'s' * (n != 1)} in discovery; little can be found."
         if b.events[0].size < FEW_EVENTS_HOLDOUT:
+            n = b.events[0].size
             yield (
-                f"{where}: only {b.events[0].size} events in the holdout; little can be confirmed."
+                f"{where}: only {n} event{'s' * (n != 1)} in the holdout; little can be confirmed."
             )
         seen[a.target] = seen.get(a.target, 0) + a.events[0].size
     panel = inputs.panel
@@ -134,7 +150,7 @@ def _in_coverage(inputs: Inputs, entity: np.ndarray, session: np.ndarray) -> np.
     return is_in
 
 
-def _peers(case: Case) -> Iterator[str]:
+def _peers(case: Case, dates: np.ndarray) -> Iterator[str]:
     unit = case.unit
     entity, session = case.events
     if entity.size == 0:
@@ -153,10 +169,21 @@ def _peers(case: Case) -> Iterator[str]:
     if small:
         yield (
             f"{where}: peer groups with under {SMALL_PEER_GROUP} entities or {RARE_PEER_GROUP} "
-            f"events leave little to chance: {_named(small)} ({n_small:,} of {entity.size:,} "
+            f"events leave little to chance: {named(small)} ({n_small:,} of {entity.size:,} "
             "events). Coarser peers would leave more."
         )
     margins = fit_margins(unit.is_open_et, case.is_window_et, peers, law=unit.segment.panel.law)
+    stuck = unsettled(margins, unit.is_open_et, case.is_window_et)
+    if stuck is not None:
+        if stuck.entity is not None:
+            who = f"entity {unit.segment.panel.entity_names[stuck.entity]!r}"
+        else:
+            who = f"{dates[stuck.session]} in peer group {peers.names[stuck.group or 0]!r}"
+        yield (
+            f"{where}: the margins null did not settle: for {who} it expects {stuck.fitted:.6g} "
+            f"sessions in an event window where there are {stuck.observed:,}, and its p-values are "
+            "as rough as that. Coarser peers, or leaving it out, would let it settle."
+        )
     cell_e, cell_t = np.nonzero(unit.is_open_et & case.is_window_et)
     left = 1.0 - float(margins.rates(cell_e, cell_t).mean()) if cell_e.size else 1.0
     if left < LITTLE_CHANCE:

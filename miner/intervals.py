@@ -98,8 +98,7 @@ def precision_intervals(
         rows, table.offset_c, table.entity, table.session, is_hit, horizon, n_sessions
     )
     n = table.count_c[rows].astype(float)
-    total = np.concatenate([[0], np.cumsum(is_hit, dtype=np.int64)])
-    hits = (total[table.offset_c[1:]] - total[table.offset_c[:-1]])[rows]
+    hits = kernels.count_flags(table.offset_c, is_hit)[rows]
     low, high = np.full(rows.size, np.nan), np.full(rows.size, np.nan)
     n_effective = np.zeros(rows.size)
     n_clusters = np.minimum(n_e, n_d)

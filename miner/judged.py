@@ -10,8 +10,7 @@ import numpy as np
 from miner import triggers
 from miner.chosen import ChosenRule
 from miner.intervals import Interval, precision_intervals
-from miner.kernels import hits as kernels
-from miner.nulls.margins import fit_margins, judge_hits
+from miner.nulls.margins import Margins, fit, judge_hits, tally
 from miner.time_split import Segment
 from miner.triggers import Combo
 from miner.units import Case, base_rates, make_case, make_unit
@@ -21,11 +20,12 @@ from miner.units import Case, base_rates, make_case, make_unit
 class Judged:
     """What a segment says of one target's and stratum's combinations.
 
-    Arrays are over ``case.unit.triggers.combos`` (sorted by size, then types); ``rates`` is the
-    null's rate at every trigger.
+    Arrays are over ``case.unit.triggers.combos`` (sorted by size, then types); ``margins`` is
+    the null, fitted, and ``rates`` its rate at every trigger.
     """
 
     case: Case
+    margins: Margins
     rates: np.ndarray
     triggers: np.ndarray
     hits: np.ndarray
@@ -58,16 +58,13 @@ def judge_on(
     unit = make_unit(segment, stratum, code, table, lookback=lookback, horizon=horizon, rest=rest)
     case = make_case(target, unit, segment.panel.events[target])
     panel = segment.panel
-    margins = fit_margins(
-        unit.is_open_et, case.is_window_et, panel.peers, n_workers=n_workers, law=panel.law
-    )
+    margins = fit(unit.cells, case.window_ew, None, n_workers, panel.law)
     rates = margins.rates(table.entity, table.session)
     rows = np.arange(len(table.combos))
-    everything = np.ones(rates.size, dtype=bool)
-    n, hits, expected, _ = kernels.tally(rows, table.offset_c, rates, case.is_hit, everything)
-    p = judge_hits(rows, table.offset_c, rates, hits, everything, n_workers)
+    n, hits, expected, _ = tally(table, margins, case.window_ew, n_workers=n_workers)
+    p = judge_hits(rows, table, margins, hits, n_workers=n_workers)
     interval = precision_intervals(table, rows, case.is_hit, horizon, segment.panel.n_sessions)
-    return Judged(case, rates, n, hits, expected, p, base_rates(case), interval)
+    return Judged(case, margins, rates, n, hits, expected, p, base_rates(case), interval)
 
 
 def judge_rules(

@@ -74,7 +74,7 @@ class Panel:
         }
 
         def cut(bits_exw: np.ndarray) -> np.ndarray:
-            kept = np.ascontiguousarray(bits_exw[:, :, :words])
+            kept = bits_exw[:, :, :words].copy()  # never a view: what is cut is not ours
             bits.cut_after(kept.reshape(-1, words), stop)
             return kept
 

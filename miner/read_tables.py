@@ -46,6 +46,7 @@ class Log:
     stamp_us: int64 [n], UTC microseconds; a bare date is its local midnight.
     is_bare_date: bool [n], the stamp was a date without a time.
     midnight_count: stamps of exactly local midnight, bare dates included.
+    naive_count: stamps with a time of day and no offset, taken to be in the calendar's timezone.
     rows_read: rows before any were set aside; set_aside: those, as SET_ASIDE_COLUMNS.
     fingerprints: file, or redacted URL and query -> SHA-256.
     files, file_stop_row, dropped_row: where rows came from; ask `rows_of`.
@@ -65,6 +66,7 @@ class Log:
     files: tuple[str, ...]
     file_stop_row: np.ndarray  # int64 [f], rows read by the end of each file
     dropped_row: np.ndarray  # int64 sorted, running numbers from 0 of the rows set aside
+    naive_count: int = 0
 
     def __len__(self) -> int:
         return len(self.stamp_us)
@@ -169,10 +171,11 @@ def read_log(
         reader.keep(
             chunk,
             reader.codes(chunk),
-            [("time", ~stamps.is_ok, "is no time")],
+            [("time", ~stamps.is_ok, reader.no_time(chunk, "time"))],
             stamp_us=stamps.utc_us,
             is_bare=stamps.is_bare,
             is_midnight=stamps.is_midnight,
+            is_naive=stamps.is_naive,
         )
     reader.finish(may_have_no_rows)
     entity_code, entity_names = reader.names("entity")
@@ -192,6 +195,7 @@ def read_log(
         files=tuple(reader.stop_row_of),
         file_stop_row=np.array(list(reader.stop_row_of.values()), dtype=np.int64),
         dropped_row=reader.dropped_rows(),
+        naive_count=int(reader.column("is_naive").sum()),
     )
 
 
@@ -239,7 +243,7 @@ def read_prices(study: Study, progress: Progress | None = None) -> PriceTable | 
         read = {name: reader.numbers(chunk, name) for name in PRICE_COLUMNS}
         value = {name: column.values for name, column in read.items()}
         seen |= {name for name, column in read.items() if column.is_given.any()}
-        faults = [("date", ~stamps.is_ok, "is no date")]
+        faults = [("date", ~stamps.is_ok, reader.no_time(chunk, "date", "date"))]
         for name, column in read.items():
             is_needed = column.is_given | (name == "close")
             is_wrong = is_needed & ~column.is_ok
@@ -286,8 +290,8 @@ def _read_spans(
             chunk,
             reader.codes(chunk),
             [
-                ("start", has_start & ~start.is_ok, "is no time"),
-                ("end", has_end & ~end.is_ok, "is no time"),
+                ("start", has_start & ~start.is_ok, reader.no_time(chunk, "start")),
+                ("end", has_end & ~end.is_ok, reader.no_time(chunk, "end")),
                 ("end", is_reversed, "is before the start"),
             ],
             start_us=np.where(has_start, start.utc_us, OPEN_START),

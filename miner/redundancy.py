@@ -156,6 +156,14 @@ def overlap(triggers: Sequence[tuple[np.ndarray, np.ndarray]], within: Sequence[
     return index
 
 
+def share_near(
+    one: tuple[np.ndarray, np.ndarray], other: tuple[np.ndarray, np.ndarray], within: int
+) -> float:
+    """Share of one rule's triggers with one of the other's at most ``within`` sessions away; NaN
+    without any."""
+    return _n_near(one, other, within) / one[0].size if one[0].size else math.nan
+
+
 def _n_near(
     one: tuple[np.ndarray, np.ndarray], other: tuple[np.ndarray, np.ndarray], reach: int
 ) -> int:

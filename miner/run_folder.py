@@ -4,14 +4,12 @@ from __future__ import annotations
 
 import json
 import math
-import os
-import shutil
-import tempfile
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import pandas as pd
 
+from miner import placing
 from miner.errors import OutputError, explain
 from miner.report import render_into
 
@@ -19,29 +17,42 @@ if TYPE_CHECKING:
     from miner.hunting import Hunt
 
 FLOATS = "%.10g"
+ELSEWHERE = "Name a folder elsewhere."
 
 
 def check_free(folder: Path, replace: bool) -> None:
     """Refuse early what could not be written at the end.
 
+    A folder that a killed process had moved away is brought back first.
+
     Raises
     ------
     OutputError : the folder exists and may not be replaced, or its place cannot be written
     """
-    if folder.exists() and not replace:
+    try:
+        folder = folder.resolve()
+        placing.sweep(folder)
+        is_there = folder.exists()
+        is_run = folder.is_dir() and ((folder / "run.json").is_file() or not any(folder.iterdir()))
+    except (OSError, ValueError, RuntimeError) as error:
+        found = f"one the system refuses ({getattr(error, 'strerror', None) or error})"
+        raise OutputError(
+            explain("output", ascii(str(folder)), "be the path of a folder", found, ELSEWHERE)
+        ) from error
+    if is_there and not replace:
         raise OutputError(
             explain(
                 "output",
                 str(folder),
                 "not exist yet",
-                "a folder that does",
-                "Name another folder, or allow replacing this one (--replace).",
+                "a folder that does" if folder.is_dir() else "a file that does",
+                "Name another folder, or allow replacing this one: --replace, in Python "
+                "replace=True."
+                if is_run
+                else "Name another folder.",
             )
         )
-    is_other = not folder.is_dir() or (
-        any(folder.iterdir()) and not (folder / "run.json").is_file()
-    )
-    if folder.exists() and is_other:
+    if is_there and not is_run:
         raise OutputError(
             explain(
                 "output",
@@ -52,10 +63,9 @@ def check_free(folder: Path, replace: bool) -> None:
             )
         )
     try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
         # to make a folder is the only proof that one can be made
-        os.rmdir(tempfile.mkdtemp(prefix=".probe-", dir=folder.parent))
-        writable = True
+        with placing.aside(folder):
+            writable = True
     except OSError:
         writable = False
     if not writable:
@@ -65,7 +75,7 @@ def check_free(folder: Path, replace: bool) -> None:
                 str(folder.parent),
                 "be a folder that can be written",
                 "one that cannot",
-                "Name a folder elsewhere.",
+                ELSEWHERE,
             )
         )
 
@@ -78,57 +88,40 @@ def write(result: Hunt, folder: Path, replace: bool = False) -> None:
     OutputError : the files cannot be written; nothing is left behind
     """
     check_free(folder, replace)
-    aside = None
+    folder = folder.resolve()  # where a link leads to, and not the link, is replaced
     try:
-        aside = Path(tempfile.mkdtemp(prefix=f".{folder.name}-", dir=folder.parent))
-        aside.chmod(0o777 & ~_umask())
-        _write_table(result.candidates, aside / "candidates.csv")
-        result.candidates.to_parquet(aside / "candidates.parquet", index=False)
-        _write_table(result.rules, aside / "rules.csv")
-        _write_table(result.quarters, aside / "quarters.csv")
-        _write_table(result.walk_forward, aside / "walk_forward.csv")
-        if result.plain_shuffle is not None:
-            _write_table(result.plain_shuffle, aside / "plain_shuffle.csv")
-        if result.moves is not None:
-            _write_table(result.moves, aside / "moves.csv")
-        if len(result.set_aside):
-            _write_table(result.set_aside, aside / "set_aside.csv")
-        text = json.dumps(_plain(result.record), indent=1, ensure_ascii=False, allow_nan=False)
-        (aside / "run.json").write_text(text + "\n", encoding="utf-8")
-        evidence = json.dumps(_plain(result.evidence), ensure_ascii=False, allow_nan=False)
-        (aside / "evidence.json").write_text(evidence + "\n", encoding="utf-8")
-        render_into(aside)
-        if folder.exists():
-            old = Path(tempfile.mkdtemp(prefix=f".{folder.name}-old-", dir=folder.parent))
-            folder.rename(old / folder.name)
-            try:
-                aside.rename(folder)
-            except OSError:
-                (old / folder.name).rename(folder)
-                raise
-            finally:
-                shutil.rmtree(old)
-        else:
-            aside.rename(folder)
+        with placing.aside(folder) as aside:
+            _write_into(aside, result)
+            placing.put_folder(aside, folder)
     except OSError as error:
         raise OutputError(
             explain(
                 "output",
                 str(folder),
                 "be writable",
-                f"the system's error: {error.strerror}",
+                f"the system's error: {error.strerror or error}",
                 "Free some space or name a folder elsewhere.",
             )
         ) from error
-    finally:
-        if aside is not None:
-            shutil.rmtree(aside, ignore_errors=True)
 
 
-def _umask() -> int:
-    mask = os.umask(0)
-    os.umask(mask)
-    return mask
+def _write_into(aside: Path, result: Hunt) -> None:
+    _write_table(result.candidates, aside / "candidates.csv")
+    result.candidates.to_parquet(aside / "candidates.parquet", index=False)
+    _write_table(result.rules, aside / "rules.csv")
+    _write_table(result.quarters, aside / "quarters.csv")
+    _write_table(result.walk_forward, aside / "walk_forward.csv")
+    if result.plain_shuffle is not None:
+        _write_table(result.plain_shuffle, aside / "plain_shuffle.csv")
+    if result.moves is not None:
+        _write_table(result.moves, aside / "moves.csv")
+    if len(result.set_aside):
+        _write_table(result.set_aside, aside / "set_aside.csv")
+    text = json.dumps(_plain(result.record), indent=1, ensure_ascii=False, allow_nan=False)
+    (aside / "run.json").write_text(text + "\n", encoding="utf-8")
+    evidence = json.dumps(_plain(result.evidence), ensure_ascii=False, allow_nan=False)
+    (aside / "evidence.json").write_text(evidence + "\n", encoding="utf-8")
+    render_into(aside)
 
 
 def _write_table(table: pd.DataFrame, path: Path) -> None:

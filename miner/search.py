@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from miner import workers
+from miner import memory_estimate, workers
 from miner.chosen import ChosenRule
 from miner.discovery import Adjuster, Drawn, Found, draw, find, lean_p
 from miner.explain_away import Explanation, explain_away
@@ -69,6 +69,18 @@ def families_of(segment: DiscoverySlice, study: Study, n_workers: int = 1) -> Fa
     )
 
 
+def families_until(latest: Families, until: int, study: Study, n_workers: int = 1) -> Families:
+    """Families as they stood by session ``until``, cut from those of a later session.
+
+    A trigger depends on nothing after it, so one search for triggers serves every earlier end.
+    """
+    stop_t = until - study.windows.horizon + 1
+    return {
+        name: table.until(stop_t, study.mining.min_triggers, n_workers)
+        for name, table in latest.items()
+    }
+
+
 def codes_of(panel: Panel, study: Study) -> dict[str, int | None]:
     """The strata a study hunts in (``units.stratum_codes``)."""
     return stratum_codes(panel, study.groups is not None and study.groups.pooled)
@@ -98,9 +110,9 @@ def search(
     segment: DiscoverySlice,
     targets: Sequence[str],
     study: Study,
-    *,
-    with_draws: bool = True,
     families: Families | None = None,
+    *,
+    in_full: bool = True,
     progress: Progress = silent,
     n_workers: int = 1,
 ) -> Search:
@@ -108,20 +120,29 @@ def search(
 
     Parameters
     ----------
-    with_draws : draw exchanged worlds, so that westfall-young can be shown beside the chosen
-        adjustment (always done where it is the chosen one)
-    families : of the segment, if they are already at hand
+    families : of the segment, if they are at hand already
+    in_full : draw exchanged worlds, so that westfall-young can be shown beside the chosen
+        adjustment (always done where it is the chosen one), and count proposals outside the family
     """
     mining, testing = study.mining, study.testing
-    progress("triggers of every combination")
     cases = cases_of(segment, targets, study, families, n_workers)
+    with_draws = testing.permutations > 0 and (in_full or testing.adjust == "westfall-young")
+    if in_full:  # and all that follows it; a fold takes less
+        n_draws = testing.permutations if with_draws else 0
+        memory_estimate.refuse(_need_of(cases, n_draws, n_workers))
     progress("hits against the margins null")
     found = [
-        find(case, min_hits=mining.min_hits, max_size=mining.max_size, n_workers=n_workers)
+        find(
+            case,
+            min_hits=mining.min_hits,
+            max_size=mining.max_size,
+            by_mining=in_full,
+            n_workers=n_workers,
+        )
         for case in cases
     ]
     draws: list[Drawn] = []
-    if testing.permutations and (with_draws or testing.adjust == "westfall-young"):
+    if with_draws:
         progress("exchanging sessions")
         draws = [draw(f, testing.permutations, testing.seed, n_workers, progress) for f in found]
     adjuster = Adjuster(found, testing.adjust, [d.log_p_cr for d in draws] or None)
@@ -134,6 +155,20 @@ def search(
         for i, (f, drawn) in enumerate(zip(found, draws, strict=False))
     )
     return Search(tuple(found), adjuster, explanation, leans)
+
+
+def _need_of(cases: Sequence[Case], n_draws: int, n_workers: int) -> memory_estimate.Need:
+    tables = [case.unit.triggers for case in cases]
+    panel = cases[0].unit.segment.panel if cases else None
+    return memory_estimate.of_search(
+        0 if panel is None else panel.n_entities * panel.n_sessions,
+        len({case.unit.stratum for case in cases}),
+        [table.entity.size for table in tables],
+        [len(table.combos) for table in tables],
+        [case.events[0].size for case in cases],
+        n_draws,
+        n_workers,
+    )
 
 
 def placebo_rules(

@@ -119,7 +119,12 @@ def build_calendar(study: Study, first_us: int, last_us: int) -> SessionCalendar
         sessions.start or _local_date(first_us, zone),
         sessions.end or _local_date(last_us, zone),
     )
-    _check_length(first, last, sessions.start is None, sessions.end is None)
+    _check_length(
+        first,
+        last,
+        None if sessions.start else _local_day(first_us, zone),
+        None if sessions.end else _local_day(last_us, zone),
+    )
     dates, closes_us = _candidates(study, zone, first, last)
     lo = _position(dates, sessions.start) if sessions.start else _session_at(closes_us, first_us)
     if sessions.end:
@@ -131,7 +136,8 @@ def build_calendar(study: Study, first_us: int, last_us: int) -> SessionCalendar
         hi = min(hi, len(dates) - 1)
     if lo > hi:
         rule, found = "lie between start and end", f"none from {first} to {last}"
-        raise CalendarError(explain("[sessions]", "sessions", rule, found))
+        advice = "Move start or end, or give a calendar that has sessions there."
+        raise CalendarError(explain("[sessions]", "sessions", rule, found, advice))
     has_previous = lo > 0
     opens_after_us = int(closes_us[lo - 1]) if has_previous else int(closes_us[0]) - DAY_US
     previous = dates[lo - 1] if has_previous else dates[0] - np.timedelta64(1, "D")
@@ -156,7 +162,7 @@ def _candidates(
         return exchange_sessions(sessions.calendar, first, last, _MARGIN_DAYS)
     default = sessions.close or dt.time(16)
     if sessions.kind == "dates":
-        rows = read_session_dates(study.folder / sessions.calendar, sessions.calendar)
+        rows = read_session_dates(sessions.calendar, study.folder)
         dates = np.array([date for date, _ in rows], dtype="M8[D]")
         clock_us = np.array([_clock_us(close or default) for _, close in rows], dtype=np.int64)
     else:
@@ -169,25 +175,39 @@ def _candidates(
     return dates, to_utc(dates.astype("M8[us]").astype(np.int64) + clock_us, zone)
 
 
-def _check_length(first: dt.date, last: dt.date, is_first_stamp: bool, is_last_stamp: bool) -> None:
+def _check_length(
+    first: dt.date,
+    last: dt.date,
+    first_stamp: np.datetime64 | None,
+    last_stamp: np.datetime64 | None,
+) -> None:
+    """Refuse dates that run backward or on for centuries; a stamp is the date it came from."""
     if last.year - first.year <= _MOST_YEARS and first <= last:
         return
     named = [
-        f"the {word} {day} is that of the {word} stamp"
-        for word, day, is_stamp in (("first", first, is_first_stamp), ("last", last, is_last_stamp))
-        if is_stamp
+        f"the {word} {stamp} is that of the {word} stamp"
+        for word, stamp in (("first", first_stamp), ("last", last_stamp))
+        if stamp is not None
     ]
     advice = "Set start and end, or correct the stamps"
     advice += f": {' and '.join(named)}." if named else "."
     rule = f"run forward over at most {_MOST_YEARS} years"
-    raise CalendarError(explain("[sessions]", "dates", rule, f"{first} to {last}", advice))
+    found = " to ".join(
+        str(day if stamp is None else stamp)
+        for day, stamp in ((first, first_stamp), (last, last_stamp))
+    )
+    raise CalendarError(explain("[sessions]", "dates", rule, found, advice))
+
+
+def _local_day(stamp_us: int, zone: ZoneInfo) -> np.datetime64:
+    local_us = to_local(np.array([stamp_us]), zone)
+    return np.datetime64(local_us.astype("M8[us]").astype("M8[D]")[0], "D")
 
 
 def _local_date(stamp_us: int, zone: ZoneInfo) -> dt.date:
     """Return the local date of a stamp, brought inside the years a date can have."""
-    local = to_local(np.array([stamp_us]), zone).astype("M8[us]").astype("M8[D]")[0]
     low, high = np.datetime64("0002-01-01", "D"), np.datetime64("9998-12-31", "D")
-    return dt.date.fromisoformat(str(min(max(local, low), high)))
+    return dt.date.fromisoformat(str(min(max(_local_day(stamp_us, zone), low), high)))
 
 
 def _position(dates: np.ndarray, date: dt.date) -> int:

@@ -6,13 +6,14 @@ import numpy as np
 
 from miner.kernels import hits as kernels
 from miner.kernels import tails
+from miner.nulls.margins import Margins
 from miner.units import Case
 
 NODES, WEIGHTS = np.polynomial.hermite.hermgauss(21)
 
 
 def sharper_p(
-    case: Case, rates: np.ndarray, is_left: np.ndarray, larger: int, smaller: int
+    case: Case, margins: Margins, is_left: np.ndarray, larger: int, smaller: int
 ) -> float:
     """p-value of ``larger`` hitting more than the rate of ``smaller`` leads to expect.
 
@@ -21,7 +22,8 @@ def sharper_p(
 
     Parameters
     ----------
-    rates, is_left : float64 and bool, one a trigger of ``case.unit.triggers``
+    margins : the null, fitted
+    is_left : bool, one a trigger of ``case.unit.triggers``
     larger, smaller : rows of its combinations
     """
     table = case.unit.triggers
@@ -37,9 +39,9 @@ def sharper_p(
     )
     return float(
         tails.sharper_p_value(
-            rates[rest][is_rest],
+            margins.rates(table.entity[rest][is_rest], table.session[rest][is_rest]),
             int(case.is_hit[rest][is_rest].sum()),
-            rates[own][is_own],
+            margins.rates(table.entity[own][is_own], table.session[own][is_own]),
             int(case.is_hit[own][is_own].sum()),
             NODES,
             WEIGHTS,

@@ -11,6 +11,7 @@ import numpy as np
 from miner import workers
 from miner.errors import SettingsError, explain
 from miner.kernels import triggers as kernels
+from miner.memory_estimate import Growing
 from miner.panel import Panel
 from miner.time_split import Segment
 
@@ -141,9 +142,12 @@ def _find(
     panel = segment.panel
     first_t, stop_t = max(segment.first, lookback - 1), segment.last - horizon + 1
 
+    blocks = _entity_blocks(panel)
+    growing = Growing(len(blocks))
+
     def find(block: tuple[int, int]) -> Stream:
         part = slice(*block)
-        return kernels.find_triggers(
+        stream: Stream = kernels.find_triggers(
             panel.alert_ekw[part],
             panel.cover_eqw[part],
             panel.class_k,
@@ -157,8 +161,10 @@ def _find(
             first_t,
             stop_t,
         )
+        growing.add(stream[0].size)
+        return stream
 
-    return workers.in_order(find, _entity_blocks(panel), n_workers)
+    return workers.in_order(find, blocks, n_workers)
 
 
 def _entity_blocks(panel: Panel) -> list[tuple[int, int]]:

@@ -10,6 +10,7 @@ import numpy as np
 
 from miner.columns import POOLED
 from miner.kernels import bits, hits, windows
+from miner.open_cells import OpenCells
 from miner.panel import Events, Panel
 from miner.time_split import Segment
 from miner.triggers import Combo, TriggerTable, no_triggers
@@ -44,6 +45,11 @@ class Unit:
     rest: int
     is_open_et: np.ndarray
     triggers: TriggerTable
+
+    @cached_property
+    def cells(self) -> OpenCells:
+        """The open cells in their peer groups."""
+        return OpenCells(self.is_open_et, self.segment.panel.peers)
 
     @cached_property
     def slot_et(self) -> np.ndarray:
@@ -89,15 +95,13 @@ class Case:
     Attributes
     ----------
     events : int32 (entity, session), sorted, distinct, each in reach of an open cell
-    is_window_et : bool [entities, sessions], an event of the entity within the horizon after
-    is_hit : bool, one a trigger of ``unit.triggers``
+    window_ew : uint64 [entities, words], bit t: an event of the entity within the horizon after t
     """
 
     target: str
     unit: Unit
     events: Events
-    is_window_et: np.ndarray
-    is_hit: np.ndarray
+    window_ew: np.ndarray
 
     @property
     def name(self) -> tuple[str, str]:
@@ -105,11 +109,20 @@ class Case:
         return self.target, self.unit.stratum
 
     @cached_property
+    def is_window_et(self) -> np.ndarray:
+        """``window_ew`` as bool [entities, sessions]."""
+        return bits.unpack(self.window_ew, self.unit.segment.panel.n_sessions)
+
+    @cached_property
+    def is_hit(self) -> np.ndarray:
+        """Bool, one a trigger of ``unit.triggers``: an event within the horizon after."""
+        table = self.unit.triggers
+        return hits.look_up(table.entity, table.session, self.window_ew)
+
+    @cached_property
     def hits_c(self) -> np.ndarray:
         """Hits of each combination: int64 [combinations]."""
-        offset_c = self.unit.triggers.offset_c
-        total = np.concatenate([[0], np.cumsum(self.is_hit, dtype=np.int64)])
-        return total[offset_c[1:]] - total[offset_c[:-1]]
+        return hits.count_flags(self.unit.triggers.offset_c, self.is_hit)
 
 
 def make_case(target: str, unit: Unit, events: Events) -> Case:
@@ -118,11 +131,10 @@ def make_case(target: str, unit: Unit, events: Events) -> Case:
     is_in_reach = unit.slot_et[entity, session] >= 0
     entity, session = entity[is_in_reach], session[is_in_reach]
     panel = unit.segment.panel
-    is_window_et = windows.mark_windows(
+    window_ew = windows.mark_windows(
         entity, session, panel.n_entities, panel.n_sessions, unit.horizon
     )
-    is_hit = hits.look_up(unit.triggers.entity, unit.triggers.session, is_window_et)
-    return Case(target, unit, (entity, session), is_window_et, is_hit)
+    return Case(target, unit, (entity, session), window_ew)
 
 
 def bare_cases(
@@ -164,7 +176,7 @@ def base_rates(case: Case) -> np.ndarray:
         panel.cover_eqw,
         class_sq,
         bits.pack_flags(unit.is_open_et),
-        bits.pack_flags(case.is_window_et),
+        case.window_ew,
     )
     rate = np.full(len(distinct), np.nan)
     np.divide(in_window, cells, out=rate, where=cells > 0)

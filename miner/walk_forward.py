@@ -9,7 +9,7 @@ import numpy as np
 
 from miner.judged import judge_rules
 from miner.panel import Panel
-from miner.search import families_of, search
+from miner.search import Families, families_until, search
 from miner.settings import Study
 from miner.time_split import discovery_slice, holdout_slice
 from miner.triggers import Combo
@@ -51,28 +51,35 @@ def folds(n_sessions: int, n_folds: int, gap: int, shortest: int) -> list[tuple[
     return [f for f in found if f[0] + 1 >= shortest and f[2] - f[1] + 1 >= shortest]
 
 
-def walk_forward(
-    panel: Panel, targets: Sequence[str], study: Study, n_workers: int = 1
-) -> tuple[list[tuple[int, int, int]], list[FoldRule]]:
-    """Search and judge fold by fold, with the study's embargo between the two."""
-    windows = study.windows
+def plan(n_sessions: int, study: Study) -> list[tuple[int, int, int]]:
+    """The folds of a study (``folds``)."""
+    windows, held = study.windows, study.holdout
     shortest = 2 * (windows.lookback + windows.horizon)
-    parts = folds(panel.n_sessions, study.holdout.folds, study.holdout.embargo, shortest)
-    if not parts:
-        return [], []
-    # a trigger depends on nothing after it, so the last fold's triggers serve the earlier ones
-    latest = families_of(discovery_slice(panel, parts[-1][0]), study, n_workers)
+    return folds(n_sessions, held.folds, held.embargo, shortest)
+
+
+def walk_forward(
+    panel: Panel,
+    targets: Sequence[str],
+    study: Study,
+    parts: Sequence[tuple[int, int, int]],
+    latest: Families,
+    n_workers: int = 1,
+) -> list[FoldRule]:
+    """Search and judge fold by fold, with the study's embargo between the two.
+
+    Parameters
+    ----------
+    parts : the folds (``plan``)
+    latest : families found up to the last fold's discovery, or later
+    """
+    windows = study.windows
     rows = []
     for number, (until, first, last) in enumerate(parts, start=1):
         early = discovery_slice(panel, until)
         late = holdout_slice(panel, first, last)
-        families = {
-            name: table.until(until - windows.horizon + 1, study.mining.min_triggers)
-            for name, table in latest.items()
-        }
-        rules = search(
-            early, targets, study, with_draws=False, families=families, n_workers=n_workers
-        ).chosen()
+        families = families_until(latest, until, study, n_workers)
+        rules = search(early, targets, study, families, in_full=False, n_workers=n_workers).chosen()
         judged = judge_rules(
             late,
             rules,
@@ -97,4 +104,4 @@ def walk_forward(
             )
             for rule, (unit, i) in zip(rules, judged, strict=True)
         ]
-    return parts, rows
+    return rows

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import threading
 from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
 from typing import Protocol, TypeVar
@@ -36,20 +37,24 @@ def in_order(
 ) -> list[Result]:
     """``[work(item) for item in items]``, on threads (kernels release the interpreter lock).
 
-    With a ``stage`` the share of items done is told after each.
+    With a ``stage`` the share of items done is told after each. The main thread only waits, even
+    with one worker, so that Ctrl-C is heard while a kernel runs; blocks at work then end by
+    themselves.
     """
     items = list(items)
     results: list[Result] = []
-    with ThreadPoolExecutor(max(1, min(n_workers, len(items)))) as pool:
-        try:
-            done = map(work, items) if n_workers <= 1 else pool.map(work, items)
-            for result in done:
-                results.append(result)
-                if stage:
-                    progress(stage, len(results) / len(items))
-        except BaseException:
-            pool.shutdown(cancel_futures=True)
-            raise
+    is_main = threading.current_thread() is threading.main_thread()
+    pool = ThreadPoolExecutor(max(1, min(n_workers, len(items))))
+    try:
+        done = pool.map(work, items) if is_main or n_workers > 1 else map(work, items)
+        for result in done:
+            results.append(result)
+            if stage:
+                progress(stage, len(results) / len(items))
+    except BaseException as error:
+        pool.shutdown(wait=not isinstance(error, KeyboardInterrupt), cancel_futures=True)
+        raise
+    pool.shutdown()
     return results
 
 

@@ -165,4 +165,4 @@ def test_drawn_windows_are_those_of_the_drawn_events() -> None:
     entity, session = case.events
     n_entities, n_sessions = case.unit.is_open_et.shape
     again = mark_windows(entity, session, n_entities, n_sessions, case.unit.horizon)
-    np.testing.assert_array_equal(again, case.is_window_et)
+    np.testing.assert_array_equal(again, case.window_ew)

@@ -151,9 +151,9 @@ def test_a_superset_as_good_as_its_pair_is_not_sharper(planted):
     """p of being sharper is not small for supersets that only add background types."""
     (f,) = planted[0]
     combos = f.case.unit.triggers.combos
-    everything = np.ones(f.rates.size, dtype=bool)
+    everything = np.ones(f.case.is_hit.size, dtype=bool)
     p = [
-        sharper_p(f.case, f.rates, everything, row, combos.index((0, 1)))
+        sharper_p(f.case, f.margins, everything, row, combos.index((0, 1)))
         for row, combo in enumerate(combos)
         if {0, 1} < set(combo)
     ]

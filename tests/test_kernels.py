@@ -14,6 +14,8 @@ from scipy.stats import chi2, poisson_binom
 
 from miner.discovery import TIE
 from miner.kernels import bits, exchanges, hits, margins, shifts, tails, triggers, windows
+from miner.open_cells import OpenCells
+from miner.panel import Labels
 from miner.sharper import NODES, WEIGHTS
 
 BORDERS = [1, 2, 63, 64, 65, 127, 128, 129, 150]
@@ -109,6 +111,15 @@ def test_an_alert_keeps_its_type_on_for_the_lookback(seed, n_sessions, lookback)
         assert is_on[k, t] == alerts[0, k, max(0, t - lookback + 1) : t + 1].any()
 
 
+def tree_of(rows):
+    """The arrays of a tree of combinations, sorted by size, then by types."""
+    n_roots = sum(len(row) == 1 for row in rows)
+    children = [sum(row[:-1] == node and len(row) > 1 for row in rows) for node in rows]
+    child_n = n_roots + np.concatenate([[0], np.cumsum(children)])
+    last = np.array([row[-1] for row in rows], dtype=np.int32)
+    return last, child_n, n_roots, max(map(len, rows))
+
+
 @given(
     seeds,
     st.sampled_from([63, 64, 65, 128, 129]),
@@ -122,52 +133,84 @@ def test_triggers_are_rising_edges_after_a_rest(seed, n_sessions, lookback, rest
     cover = rng.random((3, 2, n_sessions)) < 0.8
     class_k = np.array([0, 1, 0, 1])
     first_t, stop_t = int(rng.integers(0, 5)), n_sessions - int(rng.integers(0, 5))
-    combos = [c for c in naive.all_combinations("0123", size) if len(c) == size]
+    combos = [tuple(map(int, c)) for c in naive.all_combinations("0123", size)]
     keep = rng.random(len(combos)) < 0.7
-    keep[0] = True
-    rows = np.array([[int(k) for k in c] for c in combos])[keep]
-    changes = [[r for r in range(len(rows)) if r == 0 or (rows[r, : d + 1] != rows[r - 1, : d + 1])
-                .any()] + [len(rows)] for d in range(size)]  # fmt: skip
-    jump_ck = np.array([[min(s for s in c if s > r) for c in changes] for r in range(len(rows))])
-    combo, entity, session, on_count = triggers.find_triggers(
-        packed(alerts), packed(cover), class_k, rows, jump_ck, 10, lookback, rest, first_t, stop_t
+    wanted = [combo for combo, kept in zip(combos, keep, strict=True) if kept] or [(0,)]
+    rows = sorted(
+        {combo[:d] for combo in wanted for d in range(1, len(combo) + 1)},
+        key=lambda combo: (len(combo), combo),
+    )
+    node, entity, session = triggers.find_triggers(
+        packed(alerts), packed(cover), class_k, *tree_of(rows), 10, lookback, rest, first_t, stop_t
     )
     expected = []
+    on_count = dict.fromkeys(rows, 0)
     for e, (r, types) in ((e, x) for e in range(3) for x in enumerate(rows)):
         was_on, last = False, -(10**9)
         for t in range(n_sessions):
             is_on = all(alerts[e, k, max(0, t - lookback + 1) : t + 1].any() for k in types)
             if is_on and not was_on and t - last >= rest:
                 last = t
-                if first_t <= t < stop_t and cover[e, class_k[types], t].all():
+                if first_t <= t < stop_t and cover[e, class_k[list(types)], t].all():
                     expected.append((r, 10 + e, t))
             was_on = is_on
-            on_count[r] -= is_on
-    assert list(zip(combo, entity, session, strict=True)) == expected
-    # an alert at the end may stay on past the calendar; the count need only bound triggers
-    assert ((on_count >= 0) & (on_count <= 3 * (lookback - 1))).all()
+            on_count[types] += is_on
+    found = list(zip(node.tolist(), entity.tolist(), session.tolist(), strict=True))
+    assert sorted(found) == sorted(expected)
+    assert [f[1:] for f in found] == sorted(f[1:] for f in found)
+    for d in range(1, size + 1):
+        level = [combo for combo in rows if len(combo) == d]
+        if level:
+            counted = triggers.count_on(packed(alerts), lookback, np.array(level))
+            # an alert at the end may stay on past the calendar; the count need only bound triggers
+            more = counted - np.array([on_count[combo] for combo in level])
+            assert ((more >= 0) & (more <= 3 * (lookback - 1))).all()
 
 
 def test_many_triggers_outgrow_the_first_buffer():
     alerts = np.zeros((1, 20, 1000), dtype=bool)
     alerts[:, :, ::2] = True
-    rows, jump = np.arange(20)[:, None], np.arange(1, 21)[:, None]
     cover = np.ones((1, 1, 1000), dtype=bool)
+    rows = [(k,) for k in range(20)]
     found = triggers.find_triggers(
-        packed(alerts), packed(cover), np.zeros(20, dtype=int), rows, jump, 0, 1, 0, 0, 1000
+        packed(alerts), packed(cover), np.zeros(20, dtype=int), *tree_of(rows), 0, 1, 0, 0, 1000
     )
     assert (np.bincount(found[0]) == 500).all()
-    assert (found[2].reshape(20, 500) == np.arange(0, 1000, 2)).all()
+    assert (found[2].reshape(500, 20) == np.arange(0, 1000, 2)[:, None]).all()
+
+
+def test_children_are_found_where_some_are_missing():
+    last = np.array([9, 1, 2, 5, 8, 3], dtype=np.int32)
+    told = [triggers.child_of(last, 1, 5, k) for k in range(11)]
+    assert told == [-1, 1, 2, -1, -1, 3, -1, -1, 4, -1, -1]
+    assert triggers.child_of(last, 3, 3, 5) == -1
 
 
 def test_scatter_sorts_by_combination_and_drops():
-    out = np.full(4, -1, dtype=np.int32), np.full(4, -1, dtype=np.int32)
-    combo = np.array([0, 1, 2, 0, 2], dtype=np.int32)
-    entity, session = np.array([5, 5, 5, 6, 6]), np.array([1, 2, 3, 4, 5])
-    next_c = np.array([0, 2])
-    triggers.scatter(combo, entity, session, np.array([1, -1, 0]), next_c, *out)
-    assert (out[0].tolist(), out[1].tolist()) == ([5, 6, 5, 6], [3, 5, 1, 4])
-    assert next_c.tolist() == [2, 4]
+    out = np.full(3, -1, dtype=np.int32), np.full(3, -1, dtype=np.int32)
+    node = np.array([0, 1, 2, 0, 2], dtype=np.int32)
+    entity, session = np.array([0, 0, 0, 1, 1]), np.array([1, 2, 3, 4, 5])
+    label = np.zeros((2, 6), dtype=np.int16)
+    label[1, 4] = 1
+    every = node, entity, session, label
+    assert triggers.count_triggers(*every, -1, 9, 3).tolist() == [2, 1, 2]
+    assert triggers.count_triggers(*every, -1, 4, 3).tolist() == [1, 1, 1]
+    assert triggers.count_triggers(*every, 0, 9, 3).tolist() == [1, 1, 2]
+    next_n = np.array([2, -1, 0])
+    triggers.scatter(*every, 0, next_n, *out)
+    assert (out[0].tolist(), out[1].tolist()) == ([0, 1, 0], [3, 5, 1])
+    assert next_n.tolist() == [3, -1, 2]
+
+
+def test_a_table_is_cut_at_a_session():
+    offset, entity = np.array([0, 2, 2, 5]), np.array([3, 4, 1, 1, 2], dtype=np.int32)
+    session = np.array([7, 2, 1, 9, 3], dtype=np.int32)
+    count = np.zeros(3, dtype=np.int64)
+    triggers.count_before(offset, session, 7, count)
+    assert count.tolist() == [1, 0, 2]
+    out = np.zeros(3, dtype=np.int32), np.zeros(3, dtype=np.int32)
+    triggers.take_before(np.array([0, 2]), offset, entity, session, 7, np.array([0, 1]), *out)
+    assert (out[0].tolist(), out[1].tolist()) == ([4, 1, 2], [2, 1, 3])
 
 
 # --- windows --------------------------------------------------------------------------------
@@ -177,7 +220,7 @@ def test_scatter_sorts_by_combination_and_drops():
 def test_windows_and_the_types_before_events(seed, n_sessions, reach):
     rng = np.random.default_rng(seed)
     entity, session = np.nonzero(rng.random((3, n_sessions)) < 0.1)
-    is_window = windows.mark_windows(entity, session, 3, n_sessions, reach)
+    is_window = bits.unpack(windows.mark_windows(entity, session, 3, n_sessions, reach), n_sessions)
     alerts = random_alerts(rng, 3, 3, n_sessions)
     is_seen = windows.types_before(entity, session, packed(alerts), reach)
     events = set(zip(entity.tolist(), session.tolist(), strict=True))
@@ -212,7 +255,9 @@ def test_spells_totals_and_what_is_sure(seed, share):
     assert not any(  # spells are as long as they can be
         (e, b, g) == (f, a, h) for (e, _, b, g), (f, a, _, h) in pairwise(listed)
     )
-    counts = margins.totals(*spells, is_window, 2)
+    open_counts = margins.count_open(*spells, 5, 2, 12)
+    window_counts = margins.count_windows(*spells, bits.pack_flags(is_window), 2, 12)
+    counts = window_counts[0], open_counts[0], window_counts[1], open_counts[1]
     assert (counts[0] == (is_open & is_window).sum(axis=1)).all()
     assert (counts[1] == is_open.sum(axis=1)).all()
     for g in range(2):
@@ -228,22 +273,66 @@ def test_spells_totals_and_what_is_sure(seed, share):
     kept_rc = open_rc & (row_order == 0)[:, None] & (col_order.ravel() == 0)
     assert (kept_rc == left_rc).all()
     entity, session = np.nonzero(is_open)
-    q = margins.cell_rates(
-        entity,
-        session,
+    none = np.zeros((0, 0), dtype=bool)
+    fit = margins.Rates(
         group,
         margins.single_groups(group),
-        np.ones(5),
-        np.ones((2, 12)),
+        np.where(row_order == 0, 1.0, np.nan),
+        np.where(col_order == 0, 1.0, np.nan),
         row_order,
         col_order,
+        False,
+        False,
+        none,
+        none,
     )
+    q = margins.cell_rates(entity, session, fit)
     is_left = left_rc[entity, column[entity, session]]
     assert (q[is_left] == 0.5).all()
     assert (q[~is_left] == is_window[entity, session][~is_left]).all()
 
 
+@given(seeds)
+def test_rows_open_on_the_same_cells_are_found(seed):
+    rng = np.random.default_rng(seed)
+    kinds = rng.random((3, 70)) < 0.6
+    is_open, group = kinds[rng.integers(0, 3, 8)], np.zeros((8, 70), dtype=np.int16)
+    group[rng.random(8) < 0.3] = 1
+    total = rng.integers(0, 2, 8)
+    cells = OpenCells(is_open, Labels(("a", "b"), group))
+    rows = np.flatnonzero(rng.random(8) < 0.8)
+    order, number = cells.like_rows(rows, total)
+    assert sorted(order) == rows.tolist()
+    for i, j in np.ndindex(order.size, order.size):
+        a, b = order[i], order[j]
+        is_alike = (
+            (is_open[a] == is_open[b]).all()
+            and total[a] == total[b]
+            and ((group[a] == group[b]) | ~is_open[a]).all()
+        )
+        assert (number[i] == number[j]) == is_alike
+
+
 # --- hits -----------------------------------------------------------------------------------
+
+
+def fit_of(q_et):
+    """A fit whose rates are the given ones: every entity its own peer group."""
+    n_entities, n_sessions = q_et.shape
+    group_e = np.arange(n_entities, dtype=np.int16)
+    none = np.zeros((0, 0), dtype=bool)
+    return margins.Rates(
+        np.repeat(group_e[:, None], n_sessions, axis=1),
+        group_e,
+        np.ones(n_entities),
+        q_et / (1 - q_et),
+        np.zeros(n_entities, dtype=np.int32),
+        np.zeros(q_et.shape, dtype=np.int32),
+        False,
+        False,
+        none,
+        none,
+    )
 
 
 @given(seeds)
@@ -252,11 +341,22 @@ def test_tallies_clusters_and_neighbours(seed):
     is_trigger = rng.random((4, 6, 40)) < rng.choice([0.0, 0.05, 0.3], (4, 1, 1))
     combo, entity, session = np.nonzero(is_trigger)
     offset = np.concatenate([[0], np.cumsum(is_trigger.sum(axis=(1, 2)))])
-    q, is_left = rng.random(combo.size), rng.random(combo.size) < 0.8
-    is_hit = rng.random(combo.size) < 0.4
+    q_et, is_window = rng.random((6, 40)), rng.random((6, 40)) < 0.4
+    q, is_left = q_et[entity, session], rng.random(combo.size) < 0.8
+    is_hit, window_ew = is_window[entity, session], bits.pack_flags(is_window)
+    assert (hits.look_up(entity, session, window_ew) == is_hit).all()
+    assert (hits.count_flags(offset, is_hit) == [is_hit[combo == c].sum() for c in range(4)]).all()
     row = rng.permutation(4)
-    n, n_hits, expected, variance = hits.tally(row, offset, q, is_hit, is_left)
-    p = hits.p_values(row, offset, q, n_hits, is_left)
+    cells, fit = (row, offset, entity, session), fit_of(q_et)
+    n, n_hits, expected, variance = hits.tally(*cells, fit, window_ew, is_left)
+    p = hits.p_values(*cells, fit, n_hits, is_left)
+    everything = np.ones(combo.size, dtype=bool)
+    for with_all, with_none in zip(
+        hits.tally(*cells, fit, window_ew, everything),
+        hits.tally(*cells, fit, window_ew, everything[:0]),
+        strict=True,
+    ):
+        assert (with_all == with_none).all()
     sums = hits.cluster_sums(row, offset, entity, session, is_hit, 7, 40)
     for i, c in enumerate(row):
         part = (combo == c) & is_left
@@ -279,9 +379,12 @@ def test_tallies_clusters_and_neighbours(seed):
     cell_entity, cell_session = np.nonzero(rng.random((6, 40)) < 0.3)
     marks = np.nonzero(is_mark)
     near = hits.near_any(cell_entity, cell_session, *marks, reach)
-    is_open = np.ones((6, 40), dtype=bool)
-    hits.close_around(is_open, *marks, reach)
-    assert (near == ~hits.look_up(cell_entity, cell_session, is_open)).all()
+    open_ew = bits.pack_flags(np.ones((6, 40), dtype=bool))
+    hits.close_around(open_ew, *marks, reach, 40)
+    is_kept = np.ones(cell_entity.size, dtype=bool)
+    hits.keep_open(cell_entity, cell_session, open_ew, is_kept)
+    assert (near == ~is_kept).all()
+    is_open = bits.unpack(open_ew, 40)
     for e, t in np.ndindex(6, 40):
         assert is_open[e, t] != is_mark[e, max(0, t - reach) : t + reach + 1].any()
 
@@ -386,11 +489,23 @@ def test_tables_of_tails_fall_and_agree(n, first, last):
         np.testing.assert_allclose(told, exact, atol=0.02)
 
 
+def test_tails_beside_the_mean_are_free_of_noise():
+    """Where the saddlepoint's terms cancel, single chances are added; the mean moves over k."""
+    q = np.random.default_rng(5).uniform(0.005, 0.05, 4000)
+    least = int(q.sum()) + 1
+    for scale in np.linspace((least - 1.0) / q.sum(), (least + 1.0) / q.sum(), 41):
+        told, _ = tails.saddlepoint_tail(q * scale, least, 0.0)
+        assert told == pytest.approx(tails.exact_tail(q * scale, least), rel=1e-6)
+
+
 def test_ranks_of_draws_are_log_tails_of_the_observed_rates():
     rng = np.random.default_rng(4)
     offset, q = np.array([0, 30, 30, 90]), rng.beta(1, 5, 90)
+    cells = np.zeros(90, dtype=np.int32), np.arange(90, dtype=np.int32)
     drawn = np.stack([rng.integers(0, 20, 8), np.zeros(8), rng.integers(5, 40, 8)]).astype(np.int32)
-    ranks = tails.log_tail_ranks(np.array([2, 1, 0]), offset, q, np.ascontiguousarray(drawn[::-1]))
+    ranks = hits.log_tail_ranks(
+        np.array([2, 1, 0]), offset, *cells, fit_of(q[None]), np.ascontiguousarray(drawn[::-1])
+    )
     for i, c in enumerate((2, 1, 0)):
         for r in range(8):
             exact = naive.poisson_binomial_tail(q[offset[c] : offset[c + 1]], int(drawn[c, r]))
@@ -440,6 +555,32 @@ def shift_p(circles: list[tuple[list[int], list[int]]], observed: int) -> float:
         np.arange(n + 1), np.zeros(n, dtype=int), np.array([len(z) for _, z in circles]),
         ends, np.concatenate(window).astype(np.int32), max(len(z) for _, z in circles),
     )[0]  # fmt: skip
+
+
+@pytest.mark.parametrize("n_entities", [300, 900])
+def test_many_entities_own_timing_by_saddlepoint_is_the_sum_state_by_state(n_entities):
+    """Above sixty hits the joined law comes from the saddlepoint: compared with convolution."""
+    rng = np.random.default_rng(n_entities)
+    circles, laws = [], []
+    for _ in range(n_entities):
+        n = int(rng.integers(150, 300))
+        z = np.zeros(n, dtype=bool)
+        z[rng.integers(0, n, 4)[:, None] + np.arange(6)[None, :] - 6] = True
+        positions = np.sort(rng.choice(n, rng.integers(1, 8), replace=False))
+        circles.append((positions.tolist(), z.tolist()))
+        counts = [z[(positions + s) % n].sum() for s in range(n)]
+        laws.append(np.bincount(counts) / n)
+    mean = sum(float(law @ np.arange(law.size)) for law in laws)
+    law = np.ones(1)
+    for part in laws:
+        law = np.convolve(law, part)
+    assert mean > 2 * tails.EXACT_STATES
+    for observed in (int(mean) - 15, int(mean) + 1, int(mean * 1.2), int(mean * 1.5)):
+        exact = float(law[observed:].sum())
+        assert exact > 1e-40
+        assert n_entities * observed < tails.EXACT_WORK or observed > tails.EXACT_STATES
+        assert shift_p(circles, observed) == pytest.approx(exact, rel=2e-5)
+
 
 
 def test_circular_shifts_by_enumeration():
@@ -584,7 +725,8 @@ def test_hits_of_many_draws_are_counted_one_by_one(seed, n_draws, n_sessions):
     planes = max(4, int(np.diff(offset).max()).bit_length())
     found = exchanges.count_hits(drawn, first, offset, entity, session, horizon, n_sessions, planes)
     for r in range(n_draws):
-        is_window = windows.mark_windows(owner, drawn[r], n_entities, n_sessions, horizon)
+        window_ew = windows.mark_windows(owner, drawn[r], n_entities, n_sessions, horizon)
+        is_window = bits.unpack(window_ew, n_sessions)
         assert (found[:, r] == [(is_trigger[c] & is_window).sum() for c in range(3)]).all()
 
 
@@ -601,5 +743,6 @@ def test_hits_are_counted_across_blocks_of_entities():
     offset = np.concatenate([[0], np.cumsum(is_trigger.sum(axis=(1, 2)))])
     found = exchanges.count_hits(drawn, first, offset, entity, session, 5, n_sessions, 15)
     for r in (0, 63, 64, 129):
-        is_window = windows.mark_windows(events, drawn[r], n_entities, n_sessions, 5)
+        window_ew = windows.mark_windows(events, drawn[r], n_entities, n_sessions, 5)
+        is_window = bits.unpack(window_ew, n_sessions)
         assert (found[:, r] == [(is_trigger[c] & is_window).sum() for c in range(2)]).all()

@@ -14,7 +14,7 @@ from tiny_worlds import random_world, write_study
 
 from miner import Hunt, hunt, load_study
 from miner.columns import CANDIDATE_COLUMNS, JOINER
-from miner.kernels import windows
+from miner.kernels import bits, windows
 
 KEY = ["target", "stratum", "combination"]
 NUMBERS = list(CANDIDATE_COLUMNS)[3:15]
@@ -160,7 +160,10 @@ def test_events_beyond_the_horizon_or_before_are_no_hits(seed, horizon):
     is_inside = (session > t) & (session <= t + horizon)
     moved = np.unique(np.where(is_inside, session, rng.choice(outside, session.size)))
     zero = np.zeros(n, dtype=int)
-    flags = [windows.mark_windows(zero[: s.size], s, 1, n, horizon)[0, t] for s in (session, moved)]
+    flags = [
+        bits.unpack(windows.mark_windows(zero[: s.size], s, 1, n, horizon), n)[0, t]
+        for s in (session, moved)
+    ]
     assert flags[0] == flags[1] == is_inside.any()
 
 

@@ -369,8 +369,8 @@ def test_ragged_rows_are_listed_with_their_numbers(tmp_path):
     lines = error_of(tmp_path).splitlines()
     assert lines[0].startswith("`a.csv`: `file` must have as many fields in every row as in the")
     assert lines[1:] == [
-        "  row 2: 2 instead of 3: 'a,2020-01-02'",
-        "  row 4: 5 instead of 3: 'a,b,c,d,e'",
+        "  row 2 (line 3): 2 instead of 3: 'a,2020-01-02'",
+        "  row 4 (line 6): 5 instead of 3: 'a,b,c,d,e'",
     ]
 
 
@@ -421,11 +421,11 @@ def test_all_bad_rows_are_reported_at_once(tmp_path, monkeypatch):
     assert "got 5 cells that are not" in lines[0]
     assert 'bad_rows = "set-aside"' in lines[0]
     assert lines[1:] == [
-        '  a.csv, row 2, column entity: "" is empty',
-        '  a.csv, row 3, column type: "" is empty',
-        '  a.csv, row 3, column time: "yesterday" is no time',
-        '  a.csv, row 4, column type: " " is blank',
-        '  a.csv, row 5, column time: "2020-02-30" is no time',
+        '  a.csv, row 2, column entity: "" is empty (line 3)',
+        '  a.csv, row 3, column type: "" is empty (line 4)',
+        '  a.csv, row 3, column time: "yesterday" is no time (line 4)',
+        '  a.csv, row 4, column type: " " is blank (line 5)',
+        '  a.csv, row 5, column time: "2020-02-30" is no time: there is no such date (line 6)',
     ]
 
 
@@ -451,7 +451,7 @@ def test_bad_rows_are_set_aside_where_the_settings_say_so(tmp_path, monkeypatch)
         ["alerts", "a.csv", 2, "entity", "", "is empty"],
         ["alerts", "a.csv", 3, "type", "", "is empty"],
         ["alerts", "a.csv", 4, "type", " ", "is blank"],
-        ["alerts", "a.csv", 5, "time", "2020-02-30", "is no time"],
+        ["alerts", "a.csv", 5, "time", "2020-02-30", "is no time: there is no such date"],
         ["alerts", "b.csv", 2, "type", "", "is empty"],
     ]
     file_idx, row = log.rows_of(np.array([2, 1, 0]))
@@ -644,10 +644,10 @@ def test_wrong_spans_are_reported_together(tmp_path):
     with pytest.raises(TableError) as caught:
         read_coverage(study(tmp_path, "America/New_York", coverage={"source": "c.csv"}))
     assert str(caught.value).splitlines()[1:] == [
-        '  c.csv, row 3, column end: "2020-01-02" is before the start',
-        '  c.csv, row 4, column entity: "" is empty',
-        '  c.csv, row 4, column start: "then" is no time',
-        '  c.csv, row 4, column end: "now" is no time',
+        '  c.csv, row 3, column end: "2020-01-02" is before the start (line 4)',
+        '  c.csv, row 4, column entity: "" is empty (line 5)',
+        '  c.csv, row 4, column start: "then" is no time (line 5)',
+        '  c.csv, row 4, column end: "now" is no time (line 5)',
     ]
     coverage = {"source": "c.csv", "bad_rows": "set-aside"}
     table = read_coverage(study(tmp_path, coverage=coverage))

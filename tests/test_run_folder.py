@@ -10,7 +10,7 @@ import pandas as pd
 import pytest
 from tiny_worlds import random_world, write_study
 
-from miner import Hunt, hunt, run_folder
+from miner import Hunt, hunt, placing, run_folder
 from miner.columns import CANDIDATE_COLUMNS
 from miner.errors import OutputError
 
@@ -144,8 +144,9 @@ def test_nothing_is_left_behind_when_writing_fails(result, tmp_path, monkeypatch
 
 
 def test_a_fault_while_swapping_brings_the_old_folder_back(result, tmp_path, monkeypatch):
-    """The last step fails after the old folder was moved aside."""
+    """Where folders cannot change places: the last step fails after the old one was moved away."""
     run_folder.write(result, tmp_path / "run")
+    monkeypatch.setattr(placing, "_exchange", lambda made, target: False)
     rename, calls = Path.rename, []
 
     def second_fails(self, target):

@@ -17,6 +17,7 @@ from itertools import combinations
 
 import numpy as np
 
+from miner.kernels.bits import unpack
 from miner.kernels.windows import mark_windows
 from miner.panel import Labels, Panel, pack_alerts, pack_coverage
 from miner.price_moves import find_moves, move_events
@@ -138,7 +139,8 @@ def print_moves(n_walks: int = 22, n_sessions: int = 8000) -> None:
     for how in ("extremes", "close-to-close"):
         moves = find_moves(prices, PriceSettings(source="-", moves=how))
         for target, (entity, session) in move_events(moves)[0].items():
-            is_window = mark_windows(entity, session, n_walks, n_sessions, HORIZON)
+            window_ew = mark_windows(entity, session, n_walks, n_sessions, HORIZON)
+            is_window = unpack(window_ew, n_sessions)
             for name, is_on in alerts.items():
                 lift = is_window[is_on.to_numpy().T & is_asked].mean() / is_window[is_asked].mean()
                 print(f"| {how} | {target} | {name} | {lift:.2f} |")

@@ -12,6 +12,7 @@ from pathlib import Path
 
 import numpy as np
 
+from miner import placing
 from miner.columns import JOINER, POOLED
 from miner.demo.cast import DECOY, PLANTINGS, TARGET, Planting
 from miner.demo.files import write_tables
@@ -67,14 +68,15 @@ def write_demo(folder: Path, seed: int = DEFAULT_SEED) -> Truth:
     """
     rng = stream(seed, "demo")
     market = invent_market(rng)
-    folder.mkdir(parents=True, exist_ok=True)
-    write_tables(rng, market, folder)
-    write_prices(stream(seed, "demo", "prices"), market, folder)
     study = folder / "study.toml"
-    study.write_text(_study_text(market, seed), encoding="utf-8")
     truth = Truth(study, seed, TARGET, _planted_truth(market), JOINER.join(sorted(DECOY)))
     record = {key: value for key, value in asdict(truth).items() if key != "study"}
-    (folder / "truth.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
+    with placing.aside(folder / "demo") as aside:
+        write_tables(rng, market, aside)
+        write_prices(stream(seed, "demo", "prices"), market, aside)
+        (aside / study.name).write_text(_study_text(market, seed), encoding="utf-8")
+        (aside / "truth.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
+        placing.put_files(aside, folder)
     return truth
 
 

@@ -16,6 +16,7 @@ from miner.intervals import precision_intervals
 from miner.judged import Judged
 from miner.kernels import hits as hit_kernels
 from miner.kernels import profiles as kernels
+from miner.nulls.margins import tally
 from miner.panel import Panel
 from miner.search import Search
 from miner.triggers import Combo, TriggerTable
@@ -91,10 +92,8 @@ def parts_in_discovery(
     panel = f.case.unit.segment.panel
     own = in_stratum(table, panel, f.case.unit.code)
     rows = np.array([own.combos.index(part) for part in (*parts_of(combo), combo)])
-    rates = f.margins.rates(own.entity, own.session)
-    is_hit = hit_kernels.look_up(own.entity, own.session, f.case.is_window_et)
-    everything = np.ones(rates.size, dtype=bool)
-    n, hits, expected, _ = hit_kernels.tally(rows, own.offset_c, rates, is_hit, everything)
+    is_hit = hit_kernels.look_up(own.entity, own.session, f.case.window_ew)
+    n, hits, expected, _ = (part[rows] for part in tally(own, f.margins, f.case.window_ew))
     interval = precision_intervals(own, rows, is_hit, f.case.unit.horizon, panel.n_sessions)
     return tuple(
         Part(own.combos[row], int(n[i]), int(hits[i]), float(expected[i]), float(low), float(high))
@@ -175,7 +174,7 @@ def rule_facts(
     panel = whole.unit.segment.panel
     whole_part = part_of(whole.unit.triggers, whole_row)
     return RuleFacts(
-        hits_null(f.rates[part], int(f.case.is_hit[part].sum())),
+        hits_null(f.rates_of(table.combos.index(combo)), int(f.case.is_hit[part].sum())),
         hits_null(late.rates[late_part], int(late.case.is_hit[late_part].sum())),
         profile(rates[0], table.entity[part], table.session[part], horizon),
         profile(rates[1], *late_table.of(row), horizon),

@@ -17,7 +17,8 @@ from miner.evidence.tables import within
 from miner.kernels import bits
 from miner.kernels import hits as hit_kernels
 from miner.kernels import triggers as trigger_kernels
-from miner.nulls.margins import fit_margins
+from miner.nulls.margins import fit, tally
+from miner.open_cells import OpenCells
 from miner.panel import Panel
 from miner.triggers import TriggerTable
 
@@ -62,21 +63,16 @@ def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int 
     """
     n_types = len(panel.type_names)
     singles = _thinned(singles)
-    entity, session, offset_c = singles.entity, singles.session, singles.offset_c
-    every_row = np.arange(n_types)
 
     def column(k: int) -> tuple[np.ndarray, ...]:
-        is_open_et = bits.unpack(
-            np.ascontiguousarray(panel.cover_eqw[:, panel.class_k[k]]), panel.n_sessions
-        )
-        is_open_et[:, : lookback - 1] = False
+        open_ew = panel.cover_eqw[:, panel.class_k[k]].copy()
+        open_ew[:, : (lookback - 1) >> 6] = 0
+        open_ew[:, (lookback - 1) >> 6] &= bits.ALL << np.uint64((lookback - 1) & 63)
         on_ew = _kept_on(np.ascontiguousarray(panel.alert_ekw[:, k]), lookback)
-        is_on_et = bits.unpack(on_ew, panel.n_sessions)
-        margins = fit_margins(is_open_et, is_on_et & is_open_et, panel.peers, law=panel.law)
-        is_there = hit_kernels.look_up(entity, session, is_on_et)
-        is_asked = hit_kernels.look_up(entity, session, is_open_et)
-        rates = margins.rates(entity, session)
-        return hit_kernels.tally(every_row, offset_c, rates, is_there, is_asked)
+        cells = OpenCells(bits.unpack(open_ew, panel.n_sessions), panel.peers)
+        margins = fit(cells, on_ew, law=panel.law)
+        is_asked = hit_kernels.look_up(singles.entity, singles.session, open_ew)
+        return tally(singles, margins, on_ew, is_asked)
 
     columns = workers.in_order(column, range(n_types), n_workers)
     parts = [np.stack(part, axis=1) for part in zip(*columns, strict=True)]

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import hashlib
 import os
+import stat
 import tempfile
 from collections.abc import Callable
+from contextlib import suppress
 from pathlib import Path
 from typing import Any
 
@@ -19,23 +21,38 @@ def _cache_folder() -> str | None:
 
     numba keeps compiled code by file and does not see that a kernel called from another file has
     changed; a folder for each state of the sources does. Beside the sources where that can be
-    written, else in the user's or the system's place for such things, else nowhere.
+    written, else in the user's or the system's place for such things, else nowhere; and only where
+    nobody else can write, since what is kept there is run.
     """
     here = Path(__file__).parent
     digest = hashlib.sha256()
     for source in sorted(here.glob("*.py")):
         digest.update(source.read_bytes())
-    home = os.environ.get("XDG_CACHE_HOME") or os.path.expanduser("~/.cache")
-    places = [here / "__pycache__", Path(home, "miner-kernels"), Path(tempfile.gettempdir())]
+    home = Path(os.environ.get("XDG_CACHE_HOME") or os.path.expanduser("~/.cache"))
+    places = [here / "__pycache__", home / "miner-kernels"]
+    with suppress(OSError):  # there may be none that can be written
+        places.append(Path(tempfile.gettempdir()))
     for place in places:
+        if not place.is_absolute():
+            continue  # without a home "~" stays as it is
         folder = place / f"kernels-{digest.hexdigest()[:16]}"
         try:
-            folder.mkdir(parents=True, exist_ok=True)
+            place.mkdir(parents=True, exist_ok=True)
+            folder.mkdir(mode=0o700, exist_ok=True)
+            is_safe = _is_ours_alone(folder)
         except OSError:
             continue
-        if os.access(folder, os.W_OK):
+        if is_safe and os.access(folder, os.W_OK):
             return str(folder)
     return None
+
+
+def _is_ours_alone(folder: Path) -> bool:
+    """Whether nobody else can put compiled code there for us to run."""
+    if not hasattr(os, "getuid"):
+        return True
+    info = folder.lstat()
+    return stat.S_ISDIR(info.st_mode) and info.st_uid == os.getuid() and not info.st_mode & 0o022
 
 
 CACHE_FOLDER = _cache_folder()

@@ -12,6 +12,7 @@ TINY = 1e-300
 EXACT_WORK = 100_000  # trials x states up to which one tail is always summed exactly
 EXACT_STATES = 60  # and states up to which it is whatever the number of trials
 LITTLE_SPREAD = 8.0  # variance at the tilt under which the saddlepoint is not trusted
+NEAR_MEAN = 0.05  # standard deviations from the mean within which tails are built from masses
 TABLE_WORK = 300_000  # trials x states up to which a whole table is
 
 
@@ -116,22 +117,23 @@ def tilt_to(q, total, s):
 
 
 @kernel
-def saddlepoint_tail(q, least, start):
-    """P(X >= least) by the lattice saddlepoint series to second order, and the tilt it used.
+def lattice_mass(x, s, k0, k2, k3, k4):
+    """P(X = x) of a sum on the integers by its saddlepoint, to second order.
 
-    Lugannani & Rice (1980), the lattice form with its second term as in Daniels (1987),
-    "Tail probability approximations", section 6. ``least`` lies strictly between the sure
-    successes and the possible ones; ``start`` is where the search for the tilt begins.
+    ``s`` is the tilt at which the mean is ``x``; ``k0 .. k4`` are the cumulant generating function
+    and its derivatives there. Daniels (1954), Ann. Math. Stat. 25:631-650, eq. 2.6.
     """
-    s, _ = tilt_to(q, float(least), start)
-    k0, _, k2, k3, k4 = cumulants(q, s)
-    if abs(s) < 1e-3:
-        # at the mean: Edgeworth to the same order, with the half-unit lattice correction
-        _, mean, var, third, _ = cumulants(q, 0.0)
-        z = (least - 0.5 - mean) / math.sqrt(var)
-        skew = third / var**1.5
-        density = math.exp(-0.5 * z * z) / math.sqrt(2.0 * math.pi)
-        return 0.5 * math.erfc(z / math.sqrt(2.0)) + density * skew * (z * z - 1.0) / 6.0, s
+    series = 1.0 + k4 / k2**2 / 8.0 - 5.0 * k3 * k3 / k2**3 / 24.0
+    return math.exp(k0 - s * x) / math.sqrt(2.0 * math.pi * k2) * series
+
+
+@kernel
+def lattice_tail(least, s, k0, k2, k3, k4):
+    """P(X >= least) of a sum on the integers by its saddlepoint, to second order.
+
+    Arguments as in ``lattice_mass``; ``s`` not near 0. Lugannani & Rice (1980), the lattice form
+    with its second term as in Daniels (1987), "Tail probability approximations", section 6.
+    """
     depth = s * least - k0
     w = math.sqrt(2.0 * max(depth, 0.0)) * (1.0 if s > 0 else -1.0)
     u = (1.0 - math.exp(-s)) * math.sqrt(k2)
@@ -148,9 +150,30 @@ def saddlepoint_tail(q, least, start):
         # beyond the range of erfc: Mills' ratio, the two large terms cancelled by hand
         x = w * w
         bracket = -1.0 / w**3 * (1.0 - 3.0 / x + 15.0 / x**2) + 1.0 / u + correction
-        return math.exp(log_density) * bracket, s
+        return math.exp(log_density) * bracket
     tail = normal_tail + math.exp(log_density) * (1.0 / u - 1.0 / w + correction)
-    return min(1.0, max(0.0, tail)), s
+    return min(1.0, max(0.0, tail))
+
+
+@kernel
+def saddlepoint_tail(q, least, start):
+    """P(X >= least) by the saddlepoint, and the tilt it used.
+
+    ``least`` lies strictly between the sure successes and the possible ones; ``start`` is where
+    the search for the tilt begins. Near the mean the tail's terms cancel to noise; there single
+    chances are added until it is far enough away.
+    """
+    s, _ = tilt_to(q, float(least), start)
+    first_s = s
+    mass = 0.0
+    x = least
+    while True:
+        k0, _, k2, k3, k4 = cumulants(q, s)
+        if abs(s) * math.sqrt(k2) >= NEAR_MEAN:
+            return min(1.0, mass + lattice_tail(x, s, k0, k2, k3, k4)), first_s
+        mass += lattice_mass(x, s, k0, k2, k3, k4)
+        x += 1
+        s, _ = tilt_to(q, float(x), s)
 
 
 @kernel
@@ -226,30 +249,6 @@ def tilt(q, log_odds):
 
 
 @kernel
-def log_tail_ranks(row, offset_c, q, hits_cr):
-    """log P(X >= hits) for the drawn hits of each combination: float32 [rows, draws].
-
-    ``hits_cr`` int32 [rows, draws]. The rates are the observed world's, for draws as for what was
-    observed: a test by drawing is valid with any yardstick as long as it is the same for both.
-    (One that follows each combination's draws gains power where events come in bursts, but takes
-    the closed form at its word: noise then passed 38 % of hunts where base rates are high.)
-    """
-    n_rows, n_draws = hits_cr.shape
-    log_p_cr = np.zeros((n_rows, n_draws), dtype=np.float32)
-    for i in range(n_rows):
-        first = np.int64(hits_cr[i].min())
-        last = np.int64(hits_cr[i].max())
-        if last == 0:
-            continue
-        table = tail_table(q[offset_c[row[i]] : offset_c[row[i] + 1]], first, last)
-        for x in range(table.size):
-            table[x] = math.log(max(table[x], TINY))
-        for r in range(n_draws):
-            log_p_cr[i, r] = table[hits_cr[i, r] - first]
-    return log_p_cr
-
-
-@kernel
 def sharper_p_value(q_rest, hits_rest, q_own, hits_own, node, weight):
     """Chance of at least ``hits_own`` hits, were the odds ratio that of the rest.
 
@@ -273,4 +272,4 @@ def sharper_p_value(q_rest, hits_rest, q_own, hits_own, node, weight):
     for i in range(node.size):
         log_odds_i = min(60.0, max(-60.0, log_odds + scale * node[i]))
         p += weight[i] * upper_tail(tilt(q_own, log_odds_i), hits_own)
-    return min(1.0, p / math.sqrt(math.pi))
+    return max(TINY, min(1.0, p / math.sqrt(math.pi)))

@@ -4,19 +4,19 @@ from __future__ import annotations
 
 import numpy as np
 
-from miner.kernels.bits import any_in_range, popcount
+from miner.kernels.bits import ONE, any_in_range, popcount
 from miner.kernels.compiling import kernel
 
 
 @kernel
 def mark_windows(event_entity, event_session, n_entities, n_sessions, horizon):
-    """Boolean [entities, sessions]: an event of the entity lies in ``[t + 1, t + horizon]``."""
-    is_window_et = np.zeros((n_entities, n_sessions), dtype=np.bool_)
+    """uint64 [entities, words], bit t: an event of the entity lies in ``[t + 1, t + horizon]``."""
+    window_ew = np.zeros((n_entities, (n_sessions + 63) // 64), dtype=np.uint64)
     for v in range(event_entity.size):
         s = event_session[v]
         for t in range(max(0, s - horizon), s):
-            is_window_et[event_entity[v], t] = True
-    return is_window_et
+            window_ew[event_entity[v], t >> 6] |= ONE << np.uint64(t & 63)
+    return window_ew
 
 
 @kernel

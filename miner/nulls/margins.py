@@ -3,20 +3,25 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from scipy.special import ndtr
 
 from miner import workers
 from miner.columns import HAZARD, ODDS
+from miner.kernels import bits
 from miner.kernels import hits as hit_kernels
 from miner.kernels import margins as kernels
 from miner.nulls import Judgement
+from miner.open_cells import OpenCells, Spells
 from miner.panel import Labels
+from miner.triggers import TriggerTable
 from miner.units import Case
 
 CELLS_A_BLOCK = 1_000_000
 ROWS_A_BLOCK = 64
+ROWS_A_TALLY = 256
 TOLERANCE = 1e-11
 PATIENCE = 60  # sweeps after which cells that force the solution to infinity are looked for
 MOST_SWEEPS = 2_000
@@ -48,29 +53,43 @@ class Margins:
     n_sweeps: int
     law: str = ODDS
 
-    def rates(self, entity: np.ndarray, session: np.ndarray) -> np.ndarray:
-        """Chance of an event window at each open cell: float64, the shape of ``entity``."""
-        q = kernels.cell_rates(
-            entity,
-            session,
+    @cached_property
+    def table(self) -> kernels.Rates:
+        """The fit as kernels take it."""
+        none = np.zeros((0, 0), dtype=bool)
+        return kernels.Rates(
             self.peers.code_et,
             self.peers.single_e,
-            self.odds_e,
-            self.odds_gt,
+            np.where(self.row_order == 0, self.odds_e, np.nan),
+            np.where(self.col_order == 0, self.odds_gt, np.nan),
             self.row_order,
             self.col_order,
             self.law == HAZARD,
+            self.fixed is not None,
+            *(self.fixed or (none, none)),
         )
-        if self.fixed is not None:
-            is_fixed, value = (flags[entity, session] for flags in self.fixed)
-            q = np.where(is_fixed, value, q)
-        return q
+
+    def rates(self, entity: np.ndarray, session: np.ndarray) -> np.ndarray:
+        """Chance of an event window at each open cell: float64, the shape of ``entity``."""
+        return kernels.cell_rates(entity, session, self.table)
 
 
 def fit_margins(
     is_open_et: np.ndarray,
     is_window_et: np.ndarray,
     peers: Labels,
+    start: Margins | None = None,
+    n_workers: int = 1,
+    law: str = ODDS,
+) -> Margins:
+    """``fit``, of boolean arrays [entities, sessions]."""
+    cells = OpenCells(is_open_et, peers)
+    return fit(cells, bits.pack_flags(is_window_et), start, n_workers, law)
+
+
+def fit(
+    cells: OpenCells,
+    window_ew: np.ndarray,
     start: Margins | None = None,
     n_workers: int = 1,
     law: str = ODDS,
@@ -85,43 +104,58 @@ def fit_margins(
 
     Parameters
     ----------
-    is_open_et, is_window_et : bool [entities, sessions]
+    window_ew : uint64 [entities, words], bit t: session t is in an event window
     start : a fit to begin from
 
     References
     ----------
     De Bie (2011), "Maximum entropy models and subjective interestingness", DMKD 23, sec. 3.
     """
-    spells = kernels.find_spells(is_open_et, peers.code_et)
-    counts = kernels.totals(*spells, is_window_et, len(peers.names))
-    row_order, col_order = kernels.settle_sure(*spells, *counts)
+    cells_e, cells_gt = cells.counts
+    windows_e, windows_gt = cells.windows(window_ew)
+    counts = windows_e, cells_e.copy(), windows_gt, cells_gt.copy()
+    row_order, col_order = kernels.settle_sure(*cells.spells, *counts)
     is_row, is_col = row_order == 0, col_order == 0
-    odds = _Odds(spells, counts, is_row, is_col, start, n_workers, law)
+    odds = _Odds(cells, counts, is_row, is_col, start, n_workers, law)
     fixed = None
     if not odds.fit(PATIENCE):
-        is_free_et = _free_cells(is_open_et, is_window_et, peers, is_row, is_col)
-        is_fixed_et = is_open_et & ~is_free_et
+        is_window_et = bits.unpack(window_ew, cells.is_open_et.shape[1])
+        is_free_et = _free_cells(cells.is_open_et, is_window_et, cells.peers, is_row, is_col)
+        is_fixed_et = cells.is_open_et & ~is_free_et
         is_fixed_et[~is_row] = False
-        is_fixed_et &= np.take_along_axis(is_col, peers.code_et, axis=0)
+        is_fixed_et &= np.take_along_axis(is_col, cells.peers.code_et, axis=0)
         if is_fixed_et.any():
             fixed = is_fixed_et, is_window_et
-            spells = kernels.find_spells(is_free_et, peers.code_et)
-            counts = kernels.totals(*spells, is_window_et, len(peers.names))
-            is_row &= counts[1] > 0
-            is_col &= counts[3] > 0
-            odds = _Odds(spells, counts, is_row, is_col, None, n_workers, law)
+            free = OpenCells(is_free_et, cells.peers)
+            windows_e, windows_gt = free.windows(window_ew)
+            counts = windows_e, free.counts[0], windows_gt, free.counts[1]
+            is_row &= free.counts[0] > 0
+            is_col &= free.counts[1] > 0
+            odds = _Odds(free, counts, is_row, is_col, None, n_workers, law)
         odds.fit(MOST_SWEEPS)
     return Margins(
-        peers, odds.row, odds.column, row_order, col_order, fixed, odds.miss, odds.n_sweeps, law
+        cells.peers,
+        odds.row,
+        odds.column,
+        row_order,
+        col_order,
+        fixed,
+        odds.miss,
+        odds.n_sweeps,
+        law,
     )
 
 
 class _Odds:
-    """What rows and columns multiply to (odds, or a hazard), improved sweep by sweep."""
+    """What rows and columns multiply to (odds, or a hazard), improved sweep by sweep.
+
+    Rows that are open on the same cells with the same total have the same odds: one of each kind
+    is fitted, and counts for all.
+    """
 
     def __init__(
         self,
-        spells: tuple[np.ndarray, ...],
+        cells: OpenCells,
         counts: tuple[np.ndarray, ...],
         is_row: np.ndarray,
         is_col: np.ndarray,
@@ -131,8 +165,7 @@ class _Odds:
     ) -> None:
         self.is_hazard = law == HAZARD
         windows_e, cells_e, windows_gt, cells_gt = counts
-        self.spells, self.is_row, self.is_col, self.n_workers = spells, is_row, is_col, n_workers
-        self.target_e = np.where(is_row, windows_e, 1).astype(np.float64)
+        self.is_col, self.n_workers = is_col, n_workers
         self.target_gt = np.where(is_col, windows_gt, 0).astype(np.float64)
         overall = windows_e[is_row].sum() / max(1, int(cells_e[is_row].sum()))
         row = windows_e / np.maximum(cells_e - windows_e, 1)
@@ -140,14 +173,29 @@ class _Odds:
         if start is not None:
             row = np.where(start.odds_e > 0, start.odds_e, row)
             column = np.where(start.odds_gt > 0, start.odds_gt, column)
-        self.row, self.column = np.where(is_row, row, 0.0), np.where(is_col, column, 0.0)
-        self.parts = _whole_entities(spells, CELLS_A_BLOCK)
+        self.column = np.where(is_col, column, 0.0)
+        self.order, self.kind = cells.like_rows(np.flatnonzero(is_row), windows_e)
+        first = np.flatnonzero(np.diff(self.kind, prepend=-1))
+        chosen = self.order[first]
+        self.n_rows = is_row.size
+        self.odds_k = row[chosen].astype(np.float64)
+        self.weight_k = np.bincount(self.kind, minlength=chosen.size).astype(np.float64)
+        self.target_k = windows_e[chosen].astype(np.float64)
+        self.spells = _spells_of(cells, chosen)
+        self.parts = _whole_rows(self.spells, CELLS_A_BLOCK)
         self.sums = [(np.empty(column.shape), np.empty(column.shape)) for _ in self.parts]
         self.miss, self.n_sweeps = 0.0, 0
 
+    @property
+    def row(self) -> np.ndarray:
+        """Odds of every entity, 0 where it is not fitted."""
+        odds_e = np.zeros(self.n_rows)
+        odds_e[self.order] = self.odds_k[self.kind]
+        return odds_e
+
     def fit(self, most_sweeps: int) -> bool:
         """Sweep until the totals agree; False if they do not within ``most_sweeps``."""
-        if not self.is_row.any():
+        if self.odds_k.size == 0:
             return True
         for _ in range(most_sweeps):
             self.n_sweeps += 1
@@ -169,9 +217,10 @@ class _Odds:
         return kernels.row_sweep(
             *self.parts[part],
             *self.spells,
-            self.row,
+            self.odds_k,
+            self.weight_k,
             self.column,
-            self.target_e,
+            self.target_k,
             self.is_hazard,
             *self.sums[part],
         )
@@ -210,32 +259,88 @@ def _free_cells(
     return is_free_et
 
 
-def _whole_entities(spells: tuple[np.ndarray, ...], n_cells: int) -> list[tuple[int, int]]:
-    """Ranges of spells of about ``n_cells`` cells that hold whole entities."""
-    entity, start_t, stop_t, _ = spells
-    if entity.size == 0:
+def _spells_of(cells: OpenCells, entities: np.ndarray) -> Spells:
+    """The spells of some entities, numbered from 0 in that order."""
+    first, last = cells.spell_of_e[entities], cells.spell_of_e[entities + 1]
+    n = last - first
+    row = np.repeat(np.arange(entities.size, dtype=np.int32), n)
+    within = np.arange(row.size) - np.repeat(np.cumsum(n) - n, n)
+    place = np.repeat(first, n) + within
+    _, start_t, stop_t, group = cells.spells
+    return row, start_t[place], stop_t[place], group[place]
+
+
+def _whole_rows(spells: Spells, n_cells: int) -> list[tuple[int, int]]:
+    """Ranges of spells of about ``n_cells`` cells that hold whole rows."""
+    row, start_t, stop_t, _ = spells
+    if row.size == 0:
         return [(0, 0)]
     cells = np.cumsum(stop_t - start_t, dtype=np.int64)
-    is_last = np.append(entity[1:] != entity[:-1], True)
+    is_last = np.append(row[1:] != row[:-1], True)
     ends = np.flatnonzero(is_last) + 1
     block = cells[ends - 1] // n_cells
     stops = ends[np.append(block[1:] != block[:-1], True)]
     return list(zip([0, *stops[:-1].tolist()], stops.tolist(), strict=True))
 
 
+ALL_LEFT = np.empty(0, dtype=bool)
+
+
+def tally(
+    table: TriggerTable,
+    margins: Margins,
+    window_ew: np.ndarray,
+    is_left: np.ndarray = ALL_LEFT,
+    n_workers: int = 1,
+) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+    """Triggers, hits, expected hits and variance of every combination of a table.
+
+    Parameters
+    ----------
+    window_ew : uint64 [entities, words], the event windows as bits
+    is_left : bool, one a trigger: whether it counts; empty where all do
+    """
+    n_rows = len(table.combos)
+
+    def count(block: tuple[int, int]) -> tuple[np.ndarray, ...]:
+        return hit_kernels.tally(
+            np.arange(*block),
+            table.offset_c,
+            table.entity,
+            table.session,
+            margins.table,
+            window_ew,
+            is_left,
+        )
+
+    parts = workers.in_order(count, workers.blocks(n_rows, ROWS_A_TALLY), n_workers)
+    if not parts:
+        parts = [count((0, 0))]
+    n, hits, expected, variance = (np.concatenate(part) for part in zip(*parts, strict=True))
+    return n, hits, expected, variance
+
+
 def judge_hits(
     rows: np.ndarray,
-    offset_c: np.ndarray,
-    rates: np.ndarray,
+    table: TriggerTable,
+    margins: Margins,
     hits: np.ndarray,
-    is_left: np.ndarray,
+    is_left: np.ndarray = ALL_LEFT,
     n_workers: int = 1,
 ) -> np.ndarray:
-    """P(X >= hits) of combinations whose triggers have the given rates: float64 [rows]."""
+    """P(X >= hits) of the combinations ``rows`` under a fit: float64 [rows]."""
 
     def judge(block: tuple[int, int]) -> np.ndarray:
         part = slice(*block)
-        return hit_kernels.p_values(rows[part], offset_c, rates, hits[part], is_left)
+        return hit_kernels.p_values(
+            rows[part],
+            table.offset_c,
+            table.entity,
+            table.session,
+            margins.table,
+            hits[part],
+            is_left,
+        )
 
     blocks = workers.blocks(rows.size, ROWS_A_BLOCK)
     return np.concatenate([np.empty(0), *workers.in_order(judge, blocks, n_workers)])
@@ -268,15 +373,7 @@ class MarginsNull:
     def judge(self, case: Case, rows: np.ndarray, n_workers: int = 1) -> Judgement:
         """Judge the combinations ``rows`` of ``case.unit.triggers``."""
         unit, table = case.unit, case.unit.triggers
-        margins = fit_margins(
-            unit.is_open_et,
-            case.is_window_et,
-            unit.segment.panel.peers,
-            n_workers=n_workers,
-            law=unit.segment.panel.law,
-        )
-        rates = margins.rates(table.entity, table.session)
-        is_left = np.ones(rates.size, dtype=bool)
-        _, hits, expected, _ = hit_kernels.tally(rows, table.offset_c, rates, case.is_hit, is_left)
-        p = judge_hits(rows, table.offset_c, rates, hits, is_left, n_workers)
-        return Judgement(expected, p)
+        margins = fit(unit.cells, case.window_ew, None, n_workers, unit.segment.panel.law)
+        _, hits, expected, _ = tally(table, margins, case.window_ew, n_workers=n_workers)
+        p = judge_hits(rows, table, margins, hits[rows], n_workers=n_workers)
+        return Judgement(expected[rows], p)

@@ -14,7 +14,7 @@ ROWS_A_BLOCK = 64
 
 
 class OwnTimingNull:
-    """Exact, without drawing: hits of every shift by entity, convolved over entities.
+    """Without drawing: hits of every shift by entity, their laws joined over entities.
 
     The circle of an entity for a combination is the cells on which the combination is eligible,
     joined end to end; its triggers go round together, all shifts equally likely, entities apart.

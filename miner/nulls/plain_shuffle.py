@@ -97,7 +97,6 @@ def _recount(
     table = find_triggers(
         segment, combos, unit.code, lookback=unit.lookback, horizon=unit.horizon, rest=unit.rest
     )
-    is_hit = hits.look_up(table.entity, table.session, case.is_window_et)
-    total = np.concatenate([[0], np.cumsum(is_hit, dtype=np.int64)])
-    counts = zip(table.count_c, total[table.offset_c[1:]] - total[table.offset_c[:-1]], strict=True)
+    is_hit = hits.look_up(table.entity, table.session, case.window_ew)
+    counts = zip(table.count_c, hits.count_flags(table.offset_c, is_hit), strict=True)
     return dict(zip(table.combos, counts, strict=True))

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
+from pathlib import Path
 
 import numpy as np
 import pandas as pd
 import pyarrow as pa
 
-from ..errors import TableError, explain
+from ..errors import TableError, explain, printable
+from .line_numbers import lines_of_rows
 from .sources import Chunk
 
 SET_ASIDE_COLUMNS = ["table", "file", "row", "column", "value", "reason"]
@@ -66,12 +68,25 @@ class BadRows:
             cell = (fault.column, (value or "")[:_LONGEST_VALUE], fault.reason(value))
             self._cells.append((self.table, chunk.file, chunk.first_row + row, *cell))
 
-    def refuse_any(self) -> None:
-        """Raise `TableError` listing the first cells and their number, unless they are kept."""
+    def refuse_any(self, paths: Mapping[str, Path]) -> None:
+        """Raise `TableError` listing the first cells and their number, unless they are kept.
+
+        paths: file, as rows name it -> where it is, to look up lines.
+        """
         if self.keep or not self.count:
             return
+        rows_of: dict[str, set[int]] = {}
+        for _, file, row, *_ in self._cells:
+            rows_of.setdefault(file, set()).add(row)
+        line_of = {
+            (file, row): f" (line {line})"
+            for file, rows in rows_of.items()
+            if file in paths
+            for row, line in lines_of_rows(paths[file], rows).items()
+        }
         lines = [
-            f'  {file}, row {row}, column {column}: "{value}" {reason}'
+            printable(f'  {file}, row {row}, column {column}: "{value}" {reason}')
+            + line_of.get((file, row), "")
             for _, file, row, column, value, reason in self._cells
         ]
         if self.count > len(lines):
@@ -92,6 +107,8 @@ class BadRows:
 def _text(value: pa.Scalar) -> str | None:
     try:
         plain = value.as_py()
+    except UnicodeDecodeError:  # text of a damaged file
+        plain = value.cast(pa.binary()).as_py()
     except (OverflowError, ValueError):  # a timestamp beyond what Python's own can hold
         plain = value.cast(pa.int64()).as_py()
     if isinstance(plain, bytes):

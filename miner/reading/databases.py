@@ -4,21 +4,28 @@ from __future__ import annotations
 
 import datetime as dt
 import hashlib
+import re
 import uuid
 from collections.abc import Callable, Iterator, Sequence
 from decimal import Decimal
 from pathlib import Path
 from typing import Any
-from urllib.parse import unquote
 
 import pyarrow as pa
 
 from ..errors import TableError, explain
-from ..settings import TableSettings, redact_url
+from ..settings import TableSettings, mask_credentials, redact_url
+from ..settings.paths import is_file, where_it_leads
 from .files import Columns
 from .headers import Wanted, match_columns
 
 _CHUNK_ROWS = 50_000
+# what a query must not do, the database is asked to refuse
+_READ_ONLY = {
+    "sqlite": ("PRAGMA query_only = ON",),
+    "postgresql": ("SET default_transaction_read_only = on", "SET TRANSACTION READ ONLY"),
+}
+_WRITES = re.compile("readonly database|read-only transaction")
 
 
 class RowsHash:
@@ -61,10 +68,11 @@ def read_query(
         engine = sqlalchemy.create_engine(url, poolclass=sqlalchemy.NullPool)
         options = {"stream_results": True, "no_parameters": True, "max_row_buffer": _CHUNK_ROWS}
         with engine.connect().execution_options(**options) as connection:
+            for statement in _READ_ONLY.get(url.get_backend_name(), ()):
+                connection.exec_driver_sql(statement)
             result = connection.exec_driver_sql(settings.query or "")
             if not result.returns_rows:
-                advice = "Write a select."
-                raise TableError(explain(label, "query", "return rows", "none", advice))
+                raise _no_select(label, "none")
             header = list(result.keys())
             matched = match_columns(header, wanted, label)
             at = {column: header.index(name) for column, name in matched.items()}
@@ -78,12 +86,19 @@ def read_query(
                 }
     except (SQLAlchemyError, ImportError, ValueError) as error:
         found = _without_credentials(error, settings.source)
+        if _WRITES.search(found):
+            raise _no_select(label, found) from None
         advice = "Check the URL and the query; the database's own driver must be installed."
         # the original is not chained: it may hold the URL
         raise TableError(explain(label, "database", "answer the query", found, advice)) from None
     finally:
         if engine is not None:
             engine.dispose()
+
+
+def _no_select(label: str, found: str) -> TableError:
+    rule = "return rows and change nothing"
+    return TableError(explain(label, "query", rule, found, "Write a select."))
 
 
 def _located(url: Any, folder: Path, label: str) -> Any:
@@ -94,8 +109,9 @@ def _located(url: Any, folder: Path, label: str) -> Any:
     if name.startswith("file:"):
         return url
     path = folder / name
-    if not path.is_file():
-        raise TableError(explain(label, "database", "exist", "no such file", "Check the path."))
+    if not is_file(path):
+        advice = where_it_leads(name, folder, (".db", ".sqlite", ".sqlite3"))
+        raise TableError(explain(label, "database", "exist", "no such file", advice))
     return url.set(database=str(path))
 
 
@@ -105,8 +121,8 @@ def _as_text(values: Sequence[Any], column: str, is_value: bool, label: str) -> 
     try:
         return pa.array([v if type(v) is str else plain(v) for v in values], pa.string())
     except TypeError as error:
-        rule = "hold text or whole numbers"
-        raise TableError(explain(label, f"column {column}", rule, str(error))) from None
+        rule, advice = "hold text or whole numbers", "Turn it into text in the query."
+        raise TableError(explain(label, f"column {column}", rule, str(error), advice)) from None
 
 
 def _time_text(value: Any) -> str | None:
@@ -131,10 +147,5 @@ def _name_text(value: Any) -> str | None:
 def _without_credentials(error: Exception, source: str) -> str:
     """Return the first line of a database's own message, user and password blanked out."""
     text = str(getattr(error, "orig", None) or error).strip().splitlines()[:1]
-    found = (text[0] if text else type(error).__name__)[:200].rstrip(".")
-    account = source.partition("://")[2].rpartition("@")[0]
-    user, _, password = account.partition(":")
-    for secret in (source, account, password, unquote(password), user):
-        if secret:
-            found = found.replace(secret, "***")
-    return found
+    found = text[0] if text else type(error).__name__
+    return mask_credentials(found, source)[:200].rstrip(".")

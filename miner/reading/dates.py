@@ -8,21 +8,24 @@ import re
 from pathlib import Path
 
 from ..errors import CalendarError, explain
+from ..settings.paths import where_it_leads
 
 _MOST_SHOWN = 20
 
 
-def read_session_dates(path: Path, label: str) -> list[tuple[dt.date, dt.time | None]]:
+def read_session_dates(label: str, folder: Path) -> list[tuple[dt.date, dt.time | None]]:
     """Return dates in order, each with its own close or None.
 
-    `label` is what messages call the file. Raises `CalendarError`, all bad rows at once.
+    label: its path, relative to `folder`, and what messages call it. Raises `CalendarError`, all
+    bad rows at once.
     """
-    rows = _rows(path, label)
+    rows = _rows(label, folder)
     header = rows[0] if rows else []
     if header.count("date") != 1 or header.count("close") > 1:
         found = "columns " + ", ".join(f"`{name}`" for name in header) if header else "nothing"
         rule = "have one column `date`, and at most one `close`"
-        raise CalendarError(explain(label, "header", rule, found))
+        advice = "Put a line date, or date,close, above the dates."
+        raise CalendarError(explain(label, "header", rule, found, advice))
     date_at, close_at = header.index("date"), header.index("close") if "close" in header else None
     dates: list[tuple[dt.date, dt.time | None]] = []
     faults = []
@@ -40,20 +43,30 @@ def read_session_dates(path: Path, label: str) -> list[tuple[dt.date, dt.time | 
             dates.append((date, close))
     if faults:
         rule, advice = "hold dates in order, each once", "Rows count from 1 below the header."
-        text = explain(label, "rows", rule, f"{len(faults)} that do not fit", advice)
+        text = explain(
+            label,
+            "rows",
+            rule,
+            f"{len(faults)} that {'does' if len(faults) == 1 else 'do'} not fit",
+            advice,
+        )
         raise CalendarError("\n".join([text, *faults[:_MOST_SHOWN]]))
     if not dates:
-        raise CalendarError(explain(label, "rows", "hold session dates", "no rows"))
+        advice = "Write one date a line below the header."
+        raise CalendarError(explain(label, "rows", "hold session dates", "no rows", advice))
     return dates
 
 
-def _rows(path: Path, label: str) -> list[list[str]]:
+def _rows(label: str, folder: Path) -> list[list[str]]:
     try:
-        with path.open(encoding="utf-8-sig", newline="") as file:
+        with (folder / label).open(encoding="utf-8-sig", newline="") as file:
             return [row for row in csv.reader(file) if row]
-    except (OSError, UnicodeDecodeError, csv.Error) as error:
+    except UnicodeDecodeError as error:
+        text = explain(label, "file", "be UTF-8 text", "other bytes", "Save it as UTF-8.")
+        raise CalendarError(text) from error
+    except (OSError, ValueError, csv.Error) as error:
         found = (getattr(error, "strerror", None) or str(error)).rstrip(".")
-        advice = "The path is relative to the folder of the settings."
+        advice = where_it_leads(label, folder, (".csv",))
         text = explain("[sessions]", "calendar", "be a readable csv", f"{label}: {found}", advice)
         raise CalendarError(text) from error
 

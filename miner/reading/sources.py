@@ -10,9 +10,12 @@ from pathlib import Path
 
 from ..errors import TableError, explain
 from ..settings import TableSettings, redact_url
+from ..settings.paths import is_file, where_it_leads
 from .databases import RowsHash, read_query
 from .files import Columns, read_file, sha256_of
 from .headers import Wanted
+
+_LONGEST_SHOWN = 200
 
 
 @dataclass(frozen=True)
@@ -30,12 +33,14 @@ class Source:
     """The chunks of one table; `fingerprints` is complete when they have all been read.
 
     fingerprints: path as given, or redacted URL and query -> SHA-256.
+    paths: file, as chunks name it -> where it is; empty for a query.
     """
 
     settings: TableSettings
     folder: Path
     wanted: Wanted
     fingerprints: dict[str, str] = field(default_factory=dict)
+    paths: dict[str, Path] = field(default_factory=dict)
 
     def chunks(self) -> Iterator[Chunk]:
         """Yield all rows in order, file by file. Raises `TableError`."""
@@ -49,6 +54,7 @@ class Source:
 
     def _from_files(self) -> Iterator[Chunk]:
         files = find_files(self.settings.source, self.folder, self.wanted.table)
+        self.paths.update(files)
         with ThreadPoolExecutor(max_workers=1) as pool:  # hashing runs beside reading
             hashes = {label: pool.submit(sha256_of, path) for label, path in files.items()}
             try:
@@ -65,15 +71,19 @@ def find_files(source: str, folder: Path, table: str) -> dict[str, Path]:
     The label is the path as given, relative to `folder` where the source is.
     Raises `TableError` where there is none.
     """
-    if (folder / source).is_file():
+    if is_file(folder / source):
         return {Path(source).as_posix(): folder / source}
-    found = sorted(glob.glob(source, root_dir=folder, recursive=True))
-    files = {Path(name).as_posix(): folder / name for name in found if (folder / name).is_file()}
+    try:
+        found = sorted(glob.glob(source, root_dir=folder, recursive=True))
+    except (OSError, ValueError):  # a name that no system could hold
+        found = []
+    files = {Path(name).as_posix(): folder / name for name in found if is_file(folder / name)}
     if not files:
         is_pattern = glob.has_magic(source)
         rule = "match at least one file" if is_pattern else "be a file that exists"
-        advice = f"Paths are relative to the folder of the settings, {folder}."
-        raise TableError(explain(f"[{table}]", "source", rule, f'"{source}"', advice))
+        shown = source if len(source) <= _LONGEST_SHOWN else source[:_LONGEST_SHOWN] + "..."
+        advice = where_it_leads(source, folder, (".csv", ".csv.gz", ".parquet"))
+        raise TableError(explain(f"[{table}]", "source", rule, f'"{shown}"', advice))
     return files
 
 

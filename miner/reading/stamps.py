@@ -45,12 +45,14 @@ class Stamps:
     utc_us: int64, UTC microseconds; a bare date is its local midnight.
     is_bare: bool, the value was a date without a time.
     is_midnight: bool, the value is exactly a local midnight, bare dates included.
+    is_naive: bool, the value has a time of day but no offset.
     is_ok: bool, the value is a time.
     """
 
     utc_us: np.ndarray
     is_bare: np.ndarray
     is_midnight: np.ndarray
+    is_naive: np.ndarray
     is_ok: np.ndarray
 
 
@@ -133,7 +135,7 @@ def _stamps(
         utc, local = us.copy(), us.copy()
         utc[~is_aware] = to_utc(us[~is_aware], zone)
         local[is_aware] = to_local(us[is_aware], zone)
-    return Stamps(utc, is_bare, local % DAY_US == 0, is_ok)
+    return Stamps(utc, is_bare, local % DAY_US == 0, ~(is_bare | is_aware), is_ok)
 
 
 def _to_us(ticks: np.ndarray, per_second: int) -> tuple[np.ndarray, np.ndarray]:
@@ -159,10 +161,11 @@ def _take(stamps: Stamps, indices: pa.Array) -> Stamps:
     rows, is_ok = _values(indices)
     if not len(stamps.is_ok):  # an empty dictionary: every row is null
         nothing = np.zeros(len(rows), dtype=bool)
-        return Stamps(np.zeros(len(rows), dtype=np.int64), nothing, nothing, nothing)
+        return Stamps(np.zeros(len(rows), dtype=np.int64), nothing, nothing, nothing, nothing)
     return Stamps(
         stamps.utc_us[rows],
         stamps.is_bare[rows],
         stamps.is_midnight[rows],
+        stamps.is_naive[rows],
         stamps.is_ok[rows] & is_ok,
     )

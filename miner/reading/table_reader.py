@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator
+from functools import partial
 from typing import TypeVar
 from zoneinfo import ZoneInfo
 
@@ -13,18 +14,23 @@ from ..errors import TableError, explain
 from ..settings import Study, TableSettings
 from .bad_rows import BadRows, Fault
 from .headers import Wanted
+from .hints import why_no_time, why_out_of_range
 from .names import NameCoder, fault_of_name
 from .numbers import Numbers, read_numbers
 from .sources import Chunk, Source
-from .stamps import Stamps, read_stamps
+from .stamps import Stamps, is_text, read_stamps
 from .zones import timezone_name
 
 Progress = Callable[[int], object]
 T = TypeVar("T")
+_MOST_FILES = 5
 
 
-def _always(reason: str) -> Callable[[str | None], str]:
-    return lambda value: reason
+Reason = str | Callable[[str | None], str]  # of a bad value, as in "is empty"
+
+
+def _told(reason: Reason) -> Callable[[str | None], str]:
+    return reason if callable(reason) else lambda value: reason
 
 
 class TableReader:
@@ -66,6 +72,14 @@ class TableReader:
         """Return a column of times."""
         return self._readable(lambda values: read_stamps(values, self.zone), chunk, column)
 
+    def no_time(self, chunk: Chunk, column: str, noun: str = "time") -> Reason:
+        """Return why values of a column of times that are none cannot be read."""
+        kind = chunk.columns[column].type
+        if pa.types.is_dictionary(kind):
+            kind = kind.value_type
+        is_written = is_text(kind) or pa.types.is_null(kind)
+        return partial(why_no_time, noun=noun) if is_written else why_out_of_range
+
     def numbers(self, chunk: Chunk, column: str) -> Numbers:
         """Return a column of numbers."""
         return self._readable(read_numbers, chunk, column)
@@ -82,7 +96,7 @@ class TableReader:
         self,
         chunk: Chunk,
         codes: dict[str, np.ndarray],
-        faults: list[tuple[str, np.ndarray, str]],
+        faults: list[tuple[str, np.ndarray, Reason]],
         **columns: np.ndarray,
     ) -> None:
         """Keep the chunk's good rows of `codes` and `columns`; note the others.
@@ -94,7 +108,7 @@ class TableReader:
             for name, code in codes.items()
         ]
         found += [
-            Fault(self.wanted.in_file(name), chunk.columns[name], is_bad, _always(reason))
+            Fault(self.wanted.in_file(name), chunk.columns[name], is_bad, _told(reason))
             for name, is_bad, reason in faults
         ]
         is_good = ~np.logical_or.reduce([fault.is_bad for fault in found])
@@ -112,12 +126,18 @@ class TableReader:
 
     def finish(self, may_have_no_rows: bool = False) -> None:
         """Raise `TableError` for bad rows that are not set aside, or when no row is left."""
-        self.bad.refuse_any()
+        self.bad.refuse_any(self.source.paths)
         if may_have_no_rows and not self.rows_read:
             return
         if not any(len(part) for part in self._parts.get("entity", ())):
-            found = f"{self.rows_read} rows, none of them readable" if self.rows_read else "no rows"
-            raise TableError(explain(f"[{self.wanted.table}]", "rows", "be there", found))
+            files = ", ".join(list(self.source.paths)[:_MOST_FILES]) or "the query"
+            if self.rows_read:
+                found = f"{self.rows_read} rows, none of them readable"
+                advice = f'Look at {files}: bad_rows = "error" lists what is wrong.'
+            else:
+                found = "no rows"
+                advice = f"Look at {files}: nothing stands below the header."
+            raise TableError(explain(f"[{self.wanted.table}]", "rows", "be there", found, advice))
 
     def column(self, name: str) -> np.ndarray:
         """Return one kept column whole, [n]. Its parts are let go: ask once."""

@@ -13,7 +13,8 @@ from miner.report.words import count, number, percent, some
 Row = dict[str, Any]
 
 
-def _shares(high: float) -> list[tuple[float, str]]:
+def share_ticks(high: float) -> list[tuple[float, str]]:
+    """Round shares from 0 up to ``high``, with their words."""
     at = ticks(high)
     digits = 0 if len(at) < 2 or at[1] >= 0.01 else 1 if at[1] >= 0.001 else 2
     return [(y, f"{100 * y:.{digits}f}%") for y in at]
@@ -69,7 +70,7 @@ def interval_plot(rule: Row, high: float) -> Markup:
 def interval_axis(high: float) -> Markup:
     """The scale of the interval plots."""
     plot = Plot((0, high), (0, 1), width=170, height=16, margin=(0, 4, 0, 4))
-    for x, words in _shares(high)[:: 1 if high < 0.9 else 2]:
+    for x, words in share_ticks(high)[:: 1 if high < 0.9 else 2]:
         plot.text(plot.px(x), 12, words, "start" if x == 0 else "middle")
     return plot.done(f"Scale from 0 to {percent(high)}", "chart interval")
 
@@ -119,7 +120,7 @@ def profile_plot(
     size = {"width": 200, "height": 92, "margin": (6, 6, 18, 34)} if small else {"height": 170}
     plot = Plot((-reach, reach), (0, top), **size)
     plot.box((0.5, min(horizon, reach) + 0.5), (0, top), "window")
-    plot.y_axis(_shares(top)[: None if not small else 4])
+    plot.y_axis(share_ticks(top)[: None if not small else 4])
     band = [
         (x, low, high)
         for x, low, high in zip(offsets, profile["low"], profile["high"], strict=True)
@@ -154,18 +155,18 @@ def profile_plot(
 
 def quarter_plot(quarters: Sequence[Row], holdout_quarter: str) -> Markup:
     """Precision by quarter beside expectation; dots grow with the triggers; holdout shaded."""
-    first, last = _quarter(quarters[0]["quarter"]), _quarter(quarters[-1]["quarter"])
+    first, last = quarter_number(quarters[0]["quarter"]), quarter_number(quarters[-1]["quarter"])
     first, last = min(first, last - 3), max(last, first + 3)
-    held = _quarter(holdout_quarter)
+    held = quarter_number(holdout_quarter)
     top = max(max(q["precision"], q["expected_hits"] / q["triggers"]) for q in quarters)
     top = max(top * 1.1, 0.01)
     plot = Plot((first - 0.6, last + 0.6), (0, top))
     if held <= last:
         plot.box((max(held, first) - 0.5, last + 0.6), (0, top), "window")
-    plot.y_axis(_shares(top))
+    plot.y_axis(share_ticks(top))
     years = [at for at in range(first, last + 1) if at % 4 == 0]
     plot.x_axis([(at, str(at // 4)) for at in years[:: -(-len(years) // 8) or 1]])
-    at = [_quarter(q["quarter"]) for q in quarters]
+    at = [quarter_number(q["quarter"]) for q in quarters]
     for x, q in zip(at, quarters, strict=True):
         y = q["expected_hits"] / q["triggers"]
         plot.line([(x - 0.4, y), (x + 0.4, y)], "expectedline")
@@ -187,7 +188,8 @@ def quarter_plot(quarters: Sequence[Row], holdout_quarter: str) -> Markup:
     )
 
 
-def _quarter(name: str) -> int:
+def quarter_number(name: str) -> int:
+    """Quarters since year 0 of a quarter's name."""
     year, quarter = name.split("Q")
     return 4 * int(year) + int(quarter) - 1
 

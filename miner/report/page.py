@@ -2,18 +2,13 @@
 
 from __future__ import annotations
 
-import base64
-import hashlib
 from collections.abc import Iterator
-from functools import cache
-from importlib import resources
 from typing import Any
 
-from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
 
 from miner.columns import CONFIRMED, REFUTED, UNDERPOWERED
-from miner.report import charts, sections, words
+from miner.report import charts, html, sections, words
 from miner.report.read_run import Row, Run
 
 MOST_ROWS = 1_500
@@ -22,10 +17,10 @@ MOST_EXPLAINED = 12
 
 def page(run: Run) -> str:
     """The whole page."""
-    style, script = _asset("report.css"), _asset("report.js")
+    style, script = html.asset("report.css"), html.asset("report.js")
     rules = [_rule(run, i) for i in range(len(run.rules))]
     return (
-        _environment()
+        html.environment()
         .get_template("report.html.j2")
         .render(
             run=run.record,
@@ -33,8 +28,7 @@ def page(run: Run) -> str:
             evidence=run.evidence,
             style=Markup(style),
             script=Markup(script),
-            policy=f"default-src 'none'; script-src '{_hash(script)}'; style-src '{_hash(style)}'; "
-            "base-uri 'none'; form-action 'none'",
+            policy=html.policy(style, script),
             rules=rules,
             axis=charts.interval_axis(_highest(run.rules)),
             by_verdict={
@@ -51,30 +45,6 @@ def page(run: Run) -> str:
             cautions=words.CAUTIONS,
         )
     )
-
-
-@cache
-def _environment() -> Environment:
-    environment = Environment(
-        loader=PackageLoader("miner.report"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
-    environment.filters |= words.FILTERS
-    environment.globals |= {"span": words.span, "some": words.some}
-    return environment
-
-
-def _asset(name: str) -> str:
-    return (resources.files("miner.report") / "templates" / name).read_text(encoding="utf-8")
-
-
-def _hash(text: str) -> str:
-    """What a content-security policy calls a script or style it lets pass."""
-    digest = hashlib.sha256(text.encode("utf-8")).digest()
-    return f"sha256-{base64.b64encode(digest).decode('ascii')}"
 
 
 def _highest(rules: list[Row]) -> float:

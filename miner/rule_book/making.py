@@ -41,7 +41,7 @@ from .records import (
     Workload,
     rule_id,
 )
-from .writing import check_free, write_rule_book
+from .writing import check_free, write_rule_book, write_whole
 
 STATUS_OF_VERDICT = {CONFIRMED: "candidate", REFUTED: "retired"}  # else "watch"
 HISTORY_COLUMNS = ["rule", "entity", "session", "outcome"]
@@ -188,8 +188,7 @@ def write_history(made: Made, book_path: str | Path) -> RuleBook:
     """Write the triggers so far beside the book, and return the book with a word of them."""
     path = Path(book_path)
     target = path.with_name(f"{path.stem}-history.csv")
-    path.parent.mkdir(parents=True, exist_ok=True)
-    made.history.to_csv(target, index=False, lineterminator="\n")
+    write_whole(target, made.history.to_csv(index=False, lineterminator="\n"))
     return made.book.model_copy(update={"history": History(source=target.name)})
 
 

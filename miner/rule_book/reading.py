@@ -11,7 +11,9 @@ from typing import Any
 from pydantic import ValidationError
 
 from miner.errors import SettingsError, explain
+from miner.settings.paths import similar
 from miner.settings.sections import SECTIONS
+from miner.settings.toml_errors import toml_advice
 from miner.settings.values import nearest, show
 
 from .records import BookRule, RuleBook
@@ -21,9 +23,9 @@ _KEY = re.compile(r"""^\s*("[^"]*"|'[^']*'|[A-Za-z0-9_-]+)\s*(?:\.|=)""")
 _RULES = {
     "string_type": ("be text", "Put it in quotes."),
     "tuple_type": ("be a list of texts", 'Write it as ["a", "b"].'),
-    "dict_type": ("be a table", ""),
-    "model_type": ("be a table", ""),
-    "missing": ("be given", ""),
+    "dict_type": ("be a table", "Write its keys below a heading of that name."),
+    "model_type": ("be a table", "Write its keys below a heading of that name."),
+    "missing": ("be given", "Add it; `miner rules` writes every key."),
 }
 
 
@@ -43,17 +45,27 @@ def read_rule_book(path: str | Path) -> RuleBook:
     except OSError as error:
         found = error.strerror or type(error).__name__
         raise SettingsError(
-            explain(str(path), "file", "be a rule book", found, "Check the path.")
+            explain(
+                str(path),
+                "file",
+                "be a rule book",
+                found,
+                f"{similar(path, ('.toml',))}Check the path.",
+            )
         ) from error
     except UnicodeDecodeError as error:
         raise SettingsError(
             explain(str(path), "file", "be UTF-8 text", "other bytes", "Save it as UTF-8.")
         ) from error
     except tomllib.TOMLDecodeError as error:
-        advice = 'Text goes in quotes: note = "text".'
+        advice = toml_advice(text, str(error))
         raise SettingsError(
             explain(str(path), "file", "be valid TOML", f"an error: {error}", advice)
         ) from error
+    if not {"format", "rule"} & raw.keys():
+        found = "a file with neither format nor rules" if raw else "an empty file"
+        advice = "Name what `miner rules` wrote."
+        raise SettingsError(explain(str(path), "file", "be a rule book", found, advice))
     lines = Lines(text)
     _fill_ids(raw)
     try:

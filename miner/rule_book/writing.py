@@ -4,13 +4,12 @@ from __future__ import annotations
 
 import json
 import math
-import os
 import re
-import tempfile
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+from miner import placing
 from miner.errors import OutputError, explain
 
 from .records import DIGITS, BookRule, RuleBook, RunOrigin
@@ -52,21 +51,23 @@ def write_rule_book(book: RuleBook, path: str | Path, *, replace: bool = False) 
     """
     path = Path(path)
     check_free(path, replace)
-    text = "\n".join(_lines(book)) + "\n"
+    write_whole(path, "\n".join(_lines(book)) + "\n")
+
+
+def write_whole(path: Path, text: str) -> None:
+    """Write a file that appears whole or not at all, over one that is there.
+
+    Raises
+    ------
+    OutputError : it cannot be written; what was there is there
+    """
     try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        handle, name = tempfile.mkstemp(prefix=f".{path.name}-", dir=path.parent)
-        try:
-            with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
-                file.write(text)
-            mask = os.umask(0)
-            os.umask(mask)
-            Path(name).chmod(0o666 & ~mask)
-            Path(name).replace(path)
-        finally:
-            Path(name).unlink(missing_ok=True)
+        path = path.resolve()
+        with placing.aside(path) as aside:
+            (aside / path.name).write_text(text, encoding="utf-8", newline="\n")
+            placing.put_files(aside, path.parent)
     except OSError as error:
-        found = f"the system's error: {error.strerror}"
+        found = f"the system's error: {error.strerror or error}"
         advice = "Free some space or name a file elsewhere."
         raise OutputError(explain("output", str(path), "be writable", found, advice)) from error
 

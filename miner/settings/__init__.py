@@ -10,13 +10,14 @@ from .sections import (
     HoldoutSettings,
     MiningSettings,
     PriceSettings,
+    ReviewSettings,
     SessionSettings,
     TableSettings,
     TestingSettings,
     WindowSettings,
 )
 from .study import Study, load_study, study_from_dict
-from .values import is_url, redact_url
+from .values import is_url, mask_credentials, redact_url
 
 __all__ = [
     "EventSettings",
@@ -24,6 +25,7 @@ __all__ = [
     "HoldoutSettings",
     "MiningSettings",
     "PriceSettings",
+    "ReviewSettings",
     "SessionSettings",
     "Study",
     "TableSettings",
@@ -31,6 +33,7 @@ __all__ = [
     "WindowSettings",
     "is_url",
     "load_study",
+    "mask_credentials",
     "redact_url",
     "study_from_dict",
 ]

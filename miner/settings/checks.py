@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import re
+from collections import Counter
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
@@ -27,10 +28,12 @@ from .values import nearest, show
 
 _TYPE_RULES = {
     "string_type": ("be text", "Put it in quotes."),
-    "bool_type": ("be true or false", "Write it without quotes."),
+    "bool_type": ("be true or false", "Write one of the two, without quotes."),
     "tuple_type": ("be a list of texts", 'Write it as ["a", "b"].'),
     "dict_type": ("be a table of names", 'Write it as {entity = "name in the file"}.'),
 }
+# defaults that hang on other keys
+_DERIVED = {"embargo": "lookback + horizon", "rest": "the horizon", "share": "0.3"}
 
 
 @dataclass
@@ -93,13 +96,25 @@ def _add_issue(name: str, issue: Any, problems: Problems) -> None:
     elif kind == "missing":
         problems.add(what, "be given", "nothing", f'Write {key} = "{name}.csv" below [{name}].')
     elif kind == "rule":
-        problems.add(what, context["rule"], show(value), context["advice"])
+        advice = context["advice"] or _default(name, key)
+        problems.add(what, context["rule"], show(value), advice)
     elif kind == "literal_error":
         choices = re.findall(r"'([^']+)'", context["expected"])
         problems.add(what, f"be {context['expected']}", show(value), nearest(str(value), choices))
     else:
         rule, advice = _TYPE_RULES.get(kind, (f"be right ({issue['msg']})", ""))
-        problems.add(what, rule, show(value), advice)
+        problems.add(what, rule, show(value), advice or _default(name, key))
+
+
+def _default(name: str, key: str) -> str:
+    """Return advice that holds for every key: what happens without it."""
+    if key in _DERIVED:
+        return f"Leave it out for the default, {_DERIVED[key]}."
+    known = SECTIONS[name].model_fields.get(key)
+    if known is None or known.is_required():
+        return "Write a value."
+    is_fixed = known.default_factory is None and known.default is not None
+    return f"Leave it out for the default{f', {show(known.default)}' if is_fixed else ''}."
 
 
 def check_table(name: str, table: TableSettings, problems: Problems) -> None:
@@ -114,11 +129,16 @@ def check_table(name: str, table: TableSettings, problems: Problems) -> None:
     labels = table.label_columns if isinstance(table, GroupSettings) else ()
     for label in labels:
         if label in known:
-            problems.add(f"[{name}] strata, peers", "name label columns", f'"{label}"')
+            advice = "Name a column such as a sector or a size band."
+            problems.add(f"[{name}] strata, peers", "name label columns", f'"{label}"', advice)
     for column in table.columns:
         if column not in known + labels:
             rule, advice = "rename known columns only", nearest(column, known + labels)
             problems.add(f"[{name}] columns", rule, f"`{column}`", advice)
+    twice = [file for file, count in Counter(table.columns.values()).items() if count > 1]
+    if twice:
+        rule, advice = "name every column of the file once", "Give each its own column."
+        problems.add(f"[{name}] columns", rule, ", ".join(f'"{file}"' for file in twice), advice)
 
 
 def check_sessions(sessions: SessionSettings, problems: Problems) -> None:
@@ -129,7 +149,9 @@ def check_sessions(sessions: SessionSettings, problems: Problems) -> None:
         problems.add("[sessions] close", rule, show(sessions.close), advice)
     if sessions.start and sessions.end and sessions.start >= sessions.end:
         rule = f"be before the end {sessions.end}"
-        problems.add("[sessions] start", rule, str(sessions.start))
+        problems.add(
+            "[sessions] start", rule, str(sessions.start), "Are the two the wrong way round?"
+        )
 
 
 def check_holdout(
@@ -138,13 +160,13 @@ def check_holdout(
     """Check the holdout on its own and against the calendar and the windows."""
     if {"start", "share"} <= holdout.model_fields_set:
         problems.add("[holdout]", "have start or share", "both", "Leave one of them out.")
-    first = holdout.start
+    first, advice = holdout.start, "Move one of the two, or write share = 0.3 instead."
     if first and sessions.start and first <= sessions.start:
         rule = f"be after the study's start {sessions.start}"
-        problems.add("[holdout] start", rule, str(first))
+        problems.add("[holdout] start", rule, str(first), advice)
     if first and sessions.end and first > sessions.end:
         rule = f"not be after the study's end {sessions.end}"
-        problems.add("[holdout] start", rule, str(first))
+        problems.add("[holdout] start", rule, str(first), advice)
     reach = windows.horizon + windows.lookback
     keys = ("windows.horizon", "windows.lookback", "holdout.embargo")
     if problems.spare(*keys) and holdout.embargo < reach:

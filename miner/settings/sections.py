@@ -136,10 +136,10 @@ class TestingSettings(Section):
     adjust: Literal["bh", "by", "westfall-young"] = "bh"
     margins: Literal["odds", "hazard"] = "odds"
     fdr: Share = 0.05
-    permutations: Annotated[int, whole(0)] = 2000
-    placebo: Annotated[int, whole(0)] = 20
-    shuffle: Annotated[int, whole(0)] = 0
-    seed: Annotated[int, whole(0)] = 7
+    permutations: Annotated[int, whole(0, sane=10**6)] = 2000
+    placebo: Annotated[int, whole(0, sane=10**4)] = 20
+    shuffle: Annotated[int, whole(0, sane=10**6)] = 0
+    seed: Annotated[int, whole(0, sane=2**63 - 1)] = 7
 
 
 class HoldoutSettings(Section):
@@ -147,9 +147,30 @@ class HoldoutSettings(Section):
 
     start: Day | None = None
     share: Share | None = Field(default_factory=lambda done: None if done["start"] else 0.3)
-    embargo: Annotated[int, whole(0)] = 10
+    embargo: Annotated[int, whole(0, sane=2 * 10**9)] = 10
     alpha: Share = 0.05
-    folds: Annotated[int, whole(0)] = 4
+    folds: Annotated[int, whole(0, sane=1000)] = 4
+
+
+class ReviewSettings(Section):
+    """[review], the quarterly review.
+
+    A rule is proposed for retirement when the evidence that its precision is below `keep_share`
+    times its promise reaches 1 / `alpha`, and for watching at `watch_at`. `holdout_share` is the
+    part of the window that the review's own hunt holds out, by default that of [holdout];
+    `settle` are the sessions waited for price moves to be over.
+    """
+
+    alpha: Share = 0.05
+    keep_share: Annotated[float, number(0, is_above=True, high=1)] = 0.9
+    watch_at: Annotated[float, number(1, is_above=True)] = 5.0
+    min_triggers: Annotated[int, whole(1)] = 10
+    restart_quarters: Annotated[int, whole(0)] = 4
+    hang_together: Literal["peers", "dates", "entity", "quarter"] = "peers"
+    procedure: Literal["lord++", "saffron", "addis"] = "lord++"
+    holdout_share: Share | None = None
+    settle: Annotated[int, whole(0)] = 20
+    input_quarters: Annotated[int, whole(2, 40)] = 8
 
 
 SECTIONS: dict[str, type[Section]] = {
@@ -164,6 +185,7 @@ SECTIONS: dict[str, type[Section]] = {
     "mining": MiningSettings,
     "testing": TestingSettings,
     "holdout": HoldoutSettings,
+    "review": ReviewSettings,
 }
 OPTIONAL_SECTIONS = frozenset({"groups", "coverage", "prices"})
 TABLE_COLUMNS: dict[str, tuple[str, ...]] = {

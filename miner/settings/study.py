@@ -17,6 +17,7 @@ from .checks import (
     check_testing,
     read_section,
 )
+from .paths import similar
 from .sections import (
     SECTIONS,
     EventSettings,
@@ -24,12 +25,14 @@ from .sections import (
     HoldoutSettings,
     MiningSettings,
     PriceSettings,
+    ReviewSettings,
     Section,
     SessionSettings,
     TableSettings,
     TestingSettings,
     WindowSettings,
 )
+from .toml_errors import TOO_DEEP, toml_advice
 from .values import nearest, redact_url
 
 
@@ -50,6 +53,7 @@ class Study:
     mining: MiningSettings
     testing: TestingSettings
     holdout: HoldoutSettings
+    review: ReviewSettings
     warnings: tuple[str, ...] = ()
 
     def as_dict(self) -> dict[str, Any]:
@@ -75,16 +79,29 @@ def load_study(path: str | Path) -> Study:
         return SettingsError(explain(str(path), "file", rule, found, advice))
 
     try:
-        raw = tomllib.loads(path.read_text(encoding="utf-8-sig"))
-    except OSError as error:
-        found = error.strerror or type(error).__name__
-        raise refuse("be a settings file", found, "Check the path.") from error
+        text = path.read_text(encoding="utf-8-sig")
     except UnicodeDecodeError as error:
         raise refuse("be UTF-8 text", "other bytes", "Save it as UTF-8.") from error
-    except tomllib.TOMLDecodeError as error:
-        advice = 'Text goes in quotes: name = "text".'
-        raise refuse("be valid TOML", f"an error: {error}", advice) from error
+    except (OSError, ValueError) as error:  # ValueError: a name that no system could hold
+        found = getattr(error, "strerror", None) or str(error)
+        raise refuse("be a settings file", found, _instead_of(path)) from error
+    try:
+        raw = tomllib.loads(text)
+    except (tomllib.TOMLDecodeError, RecursionError) as error:
+        found = TOO_DEEP if isinstance(error, RecursionError) else f"an error: {error}"
+        raise refuse("be valid TOML", found, toml_advice(text, found)) from error
     return _build(raw, str(path), path, path.parent, path.stem)
+
+
+def _instead_of(path: Path) -> str:
+    """Return what to try for a path that is no settings file."""
+    try:
+        inside = sorted(path.glob("*.toml")) if path.is_dir() else []
+    except (OSError, ValueError):
+        inside = []
+    if inside:
+        return f"Name the settings file in that folder: {inside[0]}."
+    return f"{similar(path, ('.toml',))}Check the path; the folder it starts from is {Path.cwd()}."
 
 
 def study_from_dict(d: Mapping[str, Any], folder: str | Path) -> Study:
@@ -135,7 +152,7 @@ def _reach(windows: Any) -> int:
     """Return horizon + lookback, with the default 5 for what is missing or wrong."""
     given = windows if isinstance(windows, Mapping) else {}
     sizes = (given.get("horizon"), given.get("lookback"))
-    return sum(size if type(size) is int and size > 0 else 5 for size in sizes)
+    return sum(size if type(size) is int and 0 < size <= 10**9 else 5 for size in sizes)
 
 
 def _warnings(study: Study) -> tuple[str, ...]:

@@ -10,11 +10,13 @@ import re
 import zoneinfo
 from collections.abc import Iterable, Mapping
 from typing import Annotated, Any
+from urllib.parse import parse_qsl, unquote
 
 from pydantic import AfterValidator, BeforeValidator
 from pydantic_core import PydanticCustomError
 
 _URL = re.compile(r"[A-Za-z][A-Za-z0-9+.\-]*://")
+_SECRET_KEYS = ("user", "password", "sslpassword", "options")
 
 
 def is_url(source: str) -> bool:
@@ -31,6 +33,18 @@ def redact_url(source: str) -> str:
         return source
     scheme, _, rest = source.partition("://")
     return f"{scheme}://" + re.split(r"[?#]", rest.rpartition("@")[2])[0]
+
+
+def mask_credentials(text: str, source: str) -> str:
+    """Return another program's text about a database, what `source` holds of secrets blanked out:
+    the URL itself, user, password, and what a query string says of either."""
+    account = source.partition("://")[2].rpartition("@")[0]
+    user, _, password = account.partition(":")
+    said = [value for key, value in parse_qsl(source.partition("?")[2]) if key in _SECRET_KEYS]
+    for secret in (source, account, password, unquote(password), *said, user):
+        if secret:
+            text = text.replace(secret, "***")
+    return text
 
 
 def show(value: Any) -> str:
@@ -63,17 +77,23 @@ def broken(rule: str, advice: str = "") -> PydanticCustomError:
     return PydanticCustomError("rule", "{rule}", {"rule": rule, "advice": advice})
 
 
-def whole(low: int, high: int | None = None) -> BeforeValidator:
-    """Return the check of a whole number of at least `low` and at most `high`."""
+def whole(low: int, high: int | None = None, *, sane: int = 10**9) -> BeforeValidator:
+    """Return the check of a whole number of at least `low` and at most `high`.
+
+    Beyond `sane` no machine would come to an end, so that a slip of the finger is told at once.
+    """
     rule = f"be a whole number of at least {low}"
     rule += "" if high is None else f" and at most {high}"
 
     def check(value: Any) -> int:
         if type(value) is not int:
-            advice = "Write it without a decimal point." if type(value) is float else _AS_NUMBER
+            is_decimal = type(value) is float and math.isfinite(value)
+            advice = "Write it without a decimal point." if is_decimal else _AS_NUMBER
             raise broken(rule, advice)
         if value < low or (high is not None and value > high):
             raise broken(rule)
+        if value > sane:
+            raise broken(f"be a whole number of at most {sane}")
         return value
 
     return BeforeValidator(check)
@@ -82,14 +102,16 @@ def whole(low: int, high: int | None = None) -> BeforeValidator:
 _AS_NUMBER = "Write it as a plain number, without quotes."
 
 
-def number(low: float, *, is_above: bool = False) -> BeforeValidator:
-    """Return the check of a finite number of at least `low`, or with `is_above` above it."""
+def number(low: float, *, is_above: bool = False, high: float = math.inf) -> BeforeValidator:
+    """Return the check of a finite number of at least `low`, or with `is_above` above it, and of at
+    most `high`."""
     rule = f"be a number {'above' if is_above else 'of at least'} {low:g}"
+    rule += f" and at most {high:g}" if math.isfinite(high) else ""
 
     def check(value: Any) -> float:
         if type(value) not in (int, float):
             raise broken(rule, _AS_NUMBER)
-        if not math.isfinite(value) or value < low or (is_above and value == low):
+        if not math.isfinite(value) or not low <= value <= high or (is_above and value == low):
             raise broken(rule)
         return float(value)
 
@@ -123,7 +145,7 @@ def _each_once(names: tuple[str, ...]) -> tuple[str, ...]:
     if not names:
         raise broken("name at least one type", "Leave it out to take every type.")
     if len(set(names)) < len(names):
-        raise broken("name every type once")
+        raise broken("name every type once", "Delete the repeated one.")
     return names
 
 
@@ -153,7 +175,7 @@ def _timezone(name: str) -> str:
     try:
         zoneinfo.ZoneInfo(name)
     except (zoneinfo.ZoneInfoNotFoundError, ValueError, OSError):
-        advice = nearest(name, sorted(zoneinfo.available_timezones()))
+        advice = nearest(name, sorted(zoneinfo.available_timezones())) or "Write Europe/London."
         raise broken("be a known timezone such as America/New_York", advice) from None
     return name
 

@@ -9,6 +9,7 @@ import numpy as np
 from scipy import stats
 
 from miner.intervals import FEW_CLUSTERS
+from miner.kernels.tails import TINY
 
 
 @dataclass(frozen=True)
@@ -64,7 +65,7 @@ def clustered_mean(value: np.ndarray, entity: np.ndarray, block: np.ndarray) -> 
         return Mean(mean, math.nan, math.nan, math.nan, math.nan, n_clusters, is_few)
     error = math.sqrt(variance)
     quantile = float(stats.t.ppf(0.975, n_clusters - 1))
-    p = float(stats.t.sf(mean / error, n_clusters - 1))
+    p = max(TINY, float(stats.t.sf(mean / error, n_clusters - 1)))
     return Mean(
         mean, error, mean - quantile * error, mean + quantile * error, p, n_clusters, is_few
     )

@@ -8,6 +8,7 @@ from pathlib import Path
 
 import pandas as pd
 
+from miner import placing
 from miner.errors import OutputError, explain
 from miner.trades.evaluate import TradeTable
 
@@ -105,11 +106,12 @@ def write_trades(result: TradeTable, folder: str | Path, *, replace: bool = Fals
             )
         )
     try:
-        folder.mkdir(parents=True, exist_ok=True)
-        for name, table in files.items():
-            table.to_csv(folder / name, index=False, float_format=FLOATS, lineterminator="\n")
+        with placing.aside(folder / "trades") as aside:
+            for name, table in files.items():
+                table.to_csv(aside / name, index=False, float_format=FLOATS, lineterminator="\n")
+            placing.put_files(aside, folder)
     except OSError as error:
-        found = f"the system's error: {error.strerror}"
+        found = f"the system's error: {error.strerror or error}"
         raise OutputError(
             explain("output", str(folder), "be writable", found, "Name a folder elsewhere.")
         ) from error

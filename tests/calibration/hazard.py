@@ -62,10 +62,10 @@ def hazard_rates(case: Case, entity: np.ndarray, session: np.ndarray) -> np.ndar
     """q = 1 - exp(-u v) at open cells of the case, fitted to its margins: float64 [cells]."""
     unit = case.unit
     peers = unit.segment.panel.peers
-    spells = kernels.find_spells(unit.is_open_et, peers.code_et)
-    counts = kernels.totals(*spells, case.is_window_et, len(peers.names))
-    row_order, col_order = kernels.settle_sure(*spells, *counts)
-    windows_e, cells_e, windows_gt, cells_gt = counts
+    spells = unit.cells.spells
+    windows_e, windows_gt = unit.cells.windows(case.window_ew)
+    cells_e, cells_gt = (part.copy() for part in unit.cells.counts)
+    row_order, col_order = kernels.settle_sure(*spells, windows_e, cells_e, windows_gt, cells_gt)
     is_row, is_col = row_order == 0, col_order == 0
     u_e = np.where(is_row, -np.log1p(-windows_e / np.maximum(cells_e, windows_e + 1)), 0.0)
     v_gt = np.where(is_col, -np.log1p(-windows_gt / np.maximum(cells_gt, windows_gt + 1)), 0.0)

@@ -13,7 +13,7 @@ from miner.discovery import TIE as SLACK
 from miner.discovery import Adjuster, Found, draw, find
 from miner.explain_away import explain_away
 from miner.holdout import judge_holdout
-from miner.kernels import tails
+from miner.kernels import hits, tails
 from miner.search import Search, cases_of, placebo_rules
 from miner.time_split import DiscoverySlice, discovery_slice, holdout_slice
 from miner.triggers import Combo
@@ -100,8 +100,13 @@ def search_all(
     if with_whole_runs:
         table = case.unit.triggers
         hits_cr = np.ascontiguousarray(RunExchanger(case, world.seed).hits(DRAWS).T)
-        runs_log_p = tails.log_tail_ranks(
-            np.arange(found.size), table.offset_c, found.rates, hits_cr
+        runs_log_p = hits.log_tail_ranks(
+            np.arange(found.size),
+            table.offset_c,
+            table.entity,
+            table.session,
+            found.margins.table,
+            hits_cr,
         )
         adjusters["wy, whole runs"] = Adjuster([found], "westfall-young", [runs_log_p])
     return found, adjusters, log_p, runs_log_p
@@ -208,10 +213,7 @@ def _discrete(
 ) -> dict[str, dict[str, int]]:
     """Kinds of combinations that pass by the adjustments on trial."""
     table = found.case.unit.triggers
-    supports = [
-        tail_steps(found.rates[table.offset_c[c] : table.offset_c[c + 1]], int(found.hits[c]))
-        for c in range(found.size)
-    ]
+    supports = [tail_steps(found.rates_of(c), int(found.hits[c])) for c in range(found.size)]
     cdf_ck = cdf_at(supports, found.p)
     smallest = np.array([support[0] for support in supports])
     logs = np.log(found.p)

@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from miner.kernels.bits import unpack
 from miner.kernels.windows import mark_windows
 from miner.nulls.exchanges import Exchanger
 from miner.nulls.own_timing import OwnTimingNull
@@ -118,7 +119,7 @@ def drawn_windows(case: Case, seed: int, n_draws: int) -> list[np.ndarray]:
     """Window flags of worlds with exchanged sessions."""
     n_entities, n_sessions = case.unit.is_open_et.shape
     return [
-        mark_windows(entity, session, n_entities, n_sessions, case.unit.horizon)
+        unpack(mark_windows(entity, session, n_entities, n_sessions, case.unit.horizon), n_sessions)
         for entity, session in Exchanger(case, seed, "warning").worlds(n_draws)
     ]
 

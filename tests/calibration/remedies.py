@@ -13,8 +13,8 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.stats import norm
 
-from miner.kernels import hits as kernels
-from miner.nulls.margins import Margins, fit_margins, judge_hits
+from miner.kernels import tails
+from miner.nulls.margins import Margins, fit_margins
 from miner.panel import Labels
 from miner.units import Case
 from tests.calibration.hazard import hazard_rates
@@ -25,8 +25,9 @@ SMALLEST = 1e-300
 def p_values(case: Case, rates: np.ndarray) -> np.ndarray:
     """P(X >= hits) of every combination under the rates at its triggers."""
     table = case.unit.triggers
-    rows = np.arange(len(table.combos))
-    return judge_hits(rows, table.offset_c, rates, case.hits_c, np.ones(rates.size, dtype=bool), 1)
+    parts = zip(table.offset_c[:-1], table.offset_c[1:], case.hits_c, strict=True)
+    p = [tails.upper_tail(rates[first:last], hits) for first, last, hits in parts]
+    return np.maximum(p, SMALLEST)
 
 
 def renewed_rows(case: Case, period: int) -> np.ndarray:
@@ -180,6 +181,5 @@ def fitted(case: Case) -> tuple[Margins, np.ndarray, np.ndarray]:
 def expected_hits(case: Case, rates: np.ndarray) -> np.ndarray:
     """Expected hits of every combination."""
     table = case.unit.triggers
-    everything = np.ones(rates.size, dtype=bool)
-    rows = np.arange(len(table.combos))
-    return kernels.tally(rows, table.offset_c, rates, case.is_hit, everything)[2]
+    total = np.concatenate([[0.0], np.cumsum(rates)])
+    return total[table.offset_c[1:]] - total[table.offset_c[:-1]]

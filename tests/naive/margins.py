@@ -10,11 +10,16 @@ row and its column are mixed. Draw an arrow row -> column where Z = 1 and column
 Z = 0: values can only be traded along a cycle, so a cell is free exactly when its row and column
 lie in one strongly connected component (Fischer 1981 gives the condition for the Rasch model).
 Forced cells get q = Z, which is the limit any fit creeps towards.
+
+With the law "hazard" the chance is q = 1 - exp(-u_e v_c) instead, with the same sums. Its fit is
+the minimum of a convex function too, the sum of F(a_e + b_c) less what the sums weigh, where
+F(x) = x + E1(e^x) has the slope 1 - exp(-e^x).
 """
 
 from collections.abc import Sequence
 
 import numpy as np
+from scipy.special import exp1
 
 from .world import Cell, Segment, Unit, World, followed, open_cells, peer_at
 
@@ -47,25 +52,31 @@ def forced_cells(open_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:
     return np.asarray(open_rc & ~is_free)
 
 
-def fit_free(free_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:
+def fit_free(free_rc: np.ndarray, z_rc: np.ndarray, law: str = "odds") -> np.ndarray:
     """Newton's method on the free cells; every one lies on a cycle, so the optimum is finite."""
     row_sum, column_sum = (free_rc & z_rc).sum(1), (free_rc & z_rc).sum(0)
     a = np.zeros(len(row_sum))
     b = np.zeros(len(column_sum))
 
     def chances(a: np.ndarray, b: np.ndarray) -> np.ndarray:
-        return np.where(free_rc, 1 / (1 + np.exp(-(a[:, None] + b[None, :]))), 0.0)
+        x = a[:, None] + b[None, :]
+        q = -np.expm1(-np.exp(x)) if law == "hazard" else 1 / (1 + np.exp(-x))
+        return np.where(free_rc, q, 0.0)
+
+    def slopes(a: np.ndarray, b: np.ndarray, q: np.ndarray) -> np.ndarray:
+        return np.exp(a[:, None] + b[None, :]) * (1 - q) if law == "hazard" else q * (1 - q)
 
     def log_likelihood(a: np.ndarray, b: np.ndarray) -> float:
-        log_norm = np.logaddexp(0, a[:, None] + b[None, :])[free_rc].sum()
-        return float(a @ row_sum + b @ column_sum - log_norm)
+        x = (a[:, None] + b[None, :])[free_rc]
+        log_norm = x + exp1(np.exp(x)) if law == "hazard" else np.logaddexp(0, x)
+        return float(a @ row_sum + b @ column_sum - log_norm.sum())
 
     for _ in range(200):
         q = chances(a, b)
         miss_a, miss_b = row_sum - q.sum(1), column_sum - q.sum(0)
         if max(np.abs(miss_a).max(), np.abs(miss_b).max()) < 1e-12:
             break
-        w = q * (1 - q)
+        w = np.where(free_rc, slopes(a, b, q), 0.0)
         inverse = np.divide(1, w.sum(0), out=np.zeros(len(b)), where=w.sum(0) > 0)
         # Solve for the rows first, columns eliminated; shifting a against b changes nothing,
         # hence least squares.
@@ -83,7 +94,9 @@ def fit_free(free_rc: np.ndarray, z_rc: np.ndarray) -> np.ndarray:
     return q
 
 
-def fit_margins(open_et: np.ndarray, z_et: np.ndarray, peer_et: np.ndarray) -> np.ndarray:
+def fit_margins(
+    open_et: np.ndarray, z_et: np.ndarray, peer_et: np.ndarray, law: str = "odds"
+) -> np.ndarray:
     """Chances q of the window indicator.
 
     open_et, z_et: bool, shape (entity, session). peer_et: int codes, same shape.
@@ -100,7 +113,7 @@ def fit_margins(open_et: np.ndarray, z_et: np.ndarray, peer_et: np.ndarray) -> n
 
     free_rc = peel(open_rc, z_rc)
     free_rc = free_rc & ~forced_cells(free_rc, z_rc)
-    fitted_rc = fit_free(free_rc, z_rc) if free_rc.any() else np.zeros(open_rc.shape)
+    fitted_rc = fit_free(free_rc, z_rc, law) if free_rc.any() else np.zeros(open_rc.shape)
 
     q_et = np.full(open_et.shape, np.nan)
     for e, t in np.argwhere(open_et):
@@ -124,5 +137,5 @@ def margins_of_unit(
         open_et[row[entity], t] = True
         z_et[row[entity], t] = followed(world, unit[0], (entity, t))
         peer_et[row[entity], t] = code[peer_at(world, entity, t)]
-    q_et = fit_margins(open_et, z_et, peer_et)
+    q_et = fit_margins(open_et, z_et, peer_et, world.law)
     return {(entity, t): float(q_et[row[entity], t]) for entity, t in cells}

@@ -45,6 +45,7 @@ class World:
     strata: tuple[Span, ...] | None = None
     peers: tuple[Span, ...] | None = None
     pooled: bool = False
+    law: str = "odds"  # how an entity's and a date's share combine in the margins: or "hazard"
 
 
 def discovery(world: World) -> Segment:

@@ -1,6 +1,6 @@
 "use strict";
 (() => {
-  const table = document.getElementById("candidates-table");
+  const table = document.querySelector("table:has(thead button)");
   if (!table) return;
   const body = table.tBodies[0];
   const rows = Array.from(body.rows);
