@@ -25,6 +25,7 @@ from miner.units import Case
 from miner.workers import Progress, silent
 
 FEW_APART = 10
+DRAWS_A_BLOCK = 128
 TIE = 0.01  # drawn log p-values are interpolated and rounded by less: within it, a tie
 
 
@@ -181,7 +182,7 @@ def draw(
     return Drawn(hits_cr, log_p_cr)
 
 
-def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int]) -> float:
+def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int], n_workers: int = 1) -> float:
     """Chance of the family as a whole leaning towards events as much as it does.
 
     The median, over combinations that share no type with a rule, of (hits - mean of draws) / sd of
@@ -197,8 +198,11 @@ def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int]) -> float:
     if some.size < FEW_APART:
         return 1.0
     observed = np.median((found.hits[some] - mean[some]) / spread[some])
-    middle_r = [
-        np.median((drawn.hits_cr[some, r] - mean[some]) / spread[some])
-        for r in range(drawn.hits_cr.shape[1])
-    ]
-    return float((1 + np.sum(middle_r >= observed)) / (1 + len(middle_r)))
+
+    def middle(block: tuple[int, int]) -> np.ndarray:
+        gap_cr = drawn.hits_cr[some, slice(*block)] - mean[some, None]
+        return np.median(gap_cr / spread[some, None], axis=0)
+
+    blocks = workers.blocks(drawn.hits_cr.shape[1], DRAWS_A_BLOCK)
+    middle_r = np.concatenate(workers.in_order(middle, blocks, n_workers))
+    return float((1 + np.sum(middle_r >= observed)) / (1 + middle_r.size))

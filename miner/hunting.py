@@ -82,10 +82,10 @@ class Hunt:
     folder: Path | None = None
 
     def __repr__(self) -> str:
-        counts = self.record["counts"]
+        n, confirmed = (self.record["counts"][key] for key in ("rules", "confirmed"))
         return (
             f"Hunt({self.record['study']!r}: {len(self.candidates):,} candidates, "
-            f"{counts['rules']:,} rules, {counts['confirmed']:,} confirmed, folder {self.folder})"
+            f"{n:,} rule{'s' * (n != 1)}, {confirmed:,} confirmed, folder {self.folder})"
         )
 
 

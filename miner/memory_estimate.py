@@ -21,6 +21,7 @@ from miner.errors import SettingsError, explain
 
 SETTING = "MINER_MEMORY"
 KERNELS = 70_000_000  # compiled code and libraries that are loaded on the way
+READ_ROW = 40  # a row's columns are joined once all have been read
 ALERT_ROW = 12
 LABEL_CELL = 6
 EVIDENCE_CELL = 34
@@ -29,14 +30,16 @@ UNIT_CELL, CASE_CELL = 3, 10
 STREAM_TRIGGER, TABLE_TRIGGER = 12, 8
 JUDGED_TRIGGER = 9  # its rate, and whether it is a hit
 PLACEBO_TRIGGER = 9
-LATER_TRIGGER = 40  # the whole calendar's triggers for the walk-forward
+LATER_TRIGGER = 32  # the whole calendar's triggers for the walk-forward
 DRAWN = 4 * 5.2  # hits and log p of a draw, joined and sorted
 EXCHANGED = 4 * (266 + 256)  # random numbers and sessions of an event in a block of draws
 
 CELLS = "cells (entities x sessions)"
+ROWS = "rows"
 TRIGGERS = "triggers"
 DRAWS = "draws"
 ADVICE = {
+    ROWS: "Read a shorter history or fewer alert types",
     CELLS: "Hunt with fewer entities or alert types, or shorten [sessions]",
     TRIGGERS: "Raise [mining] min_triggers, lower max_size, or hunt with fewer alert types",
     DRAWS: "Lower [testing] permutations (0 does without) or raise [mining] min_triggers",
@@ -47,7 +50,7 @@ ADVICE = {
 class Need:
     """Bytes yet to be taken: ``kept`` to the end, and ``stages`` of which the largest counts.
 
-    Both are told by what they grow with: CELLS, TRIGGERS or DRAWS.
+    Both are told by what they grow with: ROWS, CELLS, TRIGGERS or DRAWS.
     """
 
     kept: dict[str, float]
@@ -63,6 +66,11 @@ class Need:
         """What most of it grows with."""
         both = {name: self.kept.get(name, 0.0) + size for name, size in self.stages.items()}
         return max(both or self.kept, key=(both or self.kept).__getitem__)
+
+
+def of_rows(n_rows: int) -> Need:
+    """What a table of which ``n_rows`` have been read takes to hand on."""
+    return Need({}, {ROWS: float(READ_ROW) * n_rows})
 
 
 def of_panel(

@@ -151,7 +151,7 @@ def search(
         found, adjuster, fdr=testing.fdr, min_triggers=mining.min_triggers, n_workers=n_workers
     )
     leans = tuple(
-        lean_p(f, drawn, [rule.row for rule in explanation.rules if rule.case == i])
+        lean_p(f, drawn, [rule.row for rule in explanation.rules if rule.case == i], n_workers)
         for i, (f, drawn) in enumerate(zip(found, draws, strict=False))
     )
     return Search(tuple(found), adjuster, explanation, leans)

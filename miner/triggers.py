@@ -188,7 +188,8 @@ def _table(
     def count(stream: Stream) -> np.ndarray:
         return kernels.count_triggers(*stream, labels.code_et, label, panel.n_sessions, n_nodes)
 
-    count_bn = np.stack(workers.in_order(count, streams, n_workers))
+    counts = workers.in_order(count, streams, n_workers)  # none where there is no entity
+    count_bn = np.array(counts, dtype=np.int64).reshape(-1, n_nodes)
     count_n = count_bn.sum(axis=0)
     is_kept = count_n >= min_triggers
     if is_wanted is not None:

@@ -133,7 +133,7 @@ def _rule(
         clusters=40, in_evidence=max(len(triggers) - 2, 0), waiting=min(len(triggers), 2),
         status=status,
         reasons=(f"the reason for {status}", *(["the log was revised"] if i == 2 else [])),
-        marks=("amber came 2.4 times as often",) if i % 6 == 3 else (),
+        marks=("amber came 2.4 times as often",) if i % 5 == 3 else (),
         quarters=tuple(lines), evidence=tuple(points), triggers=tuple(triggers),
         revisions=(Revision("2025Q1", 1, 0, 2, 3),) if i == 2 else (),
     )  # fmt: skip

@@ -59,6 +59,17 @@ def test_text_of_a_damaged_parquet_file_is_shown_as_it_can_be():
     assert readers.reader()(b"\x02" + out.getvalue()) is False
 
 
+def test_a_scan_of_sessions_on_which_nobody_had_an_alert_is_empty(tmp_path):
+    """Found by fuzzing: the log goes back further than what the scan reads."""
+    rows = b"entity,time,type\na,2021-01-03 12:00:00,one\nb,2021-01-03 12:00:00,two\n"
+    book = b'format = 1\n[sessions]\ncalendar = "daily"\nstart = "2021-01-01"\nclose = "16:00"\n'
+    book += b'timezone = "UTC"\n[[rule]]\ntarget = "upset"\ncombination = ["one"]\n'
+    book += b"lookback = 1\nhorizon = 1\nrest = 0\n"
+    studies.write(tmp_path, {"alerts.csv": rows, "book.toml": book})
+    arguments = ["scan", str(tmp_path / "book.toml"), "--alerts", str(tmp_path / "alerts.csv")]
+    assert running.run([*arguments, "--as-of", "2021-03-10"], tmp_path) == 0
+
+
 def test_a_run_that_breaks_is_a_fault(tmp_path, monkeypatch):
     def breaks(*_, **__):
         raise ZeroDivisionError("by nought")

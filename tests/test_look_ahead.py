@@ -29,7 +29,7 @@ def world_of(seed):
 
 @pytest.mark.parametrize("seed", SEEDS[:2])
 def test_discovery_is_the_same_whatever_comes_after_it(seed, tmp_path):
-    audits.audit_discovery(world_of(seed), seed, tmp_path, CHANGES)
+    assert audits.audit_discovery(world_of(seed), seed, tmp_path, CHANGES) > 10
 
 
 @pytest.mark.parametrize("back", [0, 1, 5])
@@ -73,9 +73,9 @@ def test_a_short_calendar_keeps_its_holdout_when_discovery_is_cut_off(n_sessions
 @pytest.mark.slow
 @pytest.mark.parametrize("seed", range(200, 240))
 def test_many_discoveries_are_the_same_whatever_comes_after_them(seed, tmp_path):
-    world = world_of(seed) if seed % 2 else edge_world(seed)
+    world = edge_world(seed)
     if world.coverage is None and world.strata is None and world.peers is None:
-        pytest.skip("who is known hangs on the log")
+        world = world_of(seed)
     audits.audit_discovery(world, seed, tmp_path, CHANGES)
 
 

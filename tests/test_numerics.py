@@ -20,6 +20,7 @@ from miner import hunt
 from miner.assemble import CodedLog, _n_distinct
 from miner.columns import HAZARD, ODDS
 from miner.kernels import hits, shifts, tails
+from miner.kernels.margins import Rates
 from miner.kernels.tails import TINY
 from miner.nulls.margins import fit_margins
 from miner.nulls.unsettled import ENOUGH, unsettled
@@ -28,6 +29,7 @@ from miner.report.words import p_text as report_p
 from miner.summary import p_text as screen_p
 from miner.trades.significance import clustered_mean
 
+EVERY = np.empty(0, dtype=bool)  # no trigger is left out
 NODES, WEIGHTS = np.polynomial.hermite.hermgauss(21)
 
 
@@ -44,6 +46,22 @@ def log_tail(q, least):
     return top + math.log(sum(math.exp(p - top) for p in log_p))
 
 
+def rates_of(chance):
+    """A fit of one entity on one session with this chance."""
+    zero = np.zeros((1, 1), dtype=np.int16)
+    none = np.zeros((1, 1), dtype=bool)
+    odds = np.array([chance / (1 - chance)])
+    order = np.zeros(1, dtype=np.int32), np.zeros((1, 1), dtype=np.int32)
+    return Rates(zero, zero[0], odds, np.ones((1, 1)), *order, False, False, none, none)
+
+
+def p_value(chance, n, n_hits):
+    """p of one combination with n triggers of equal chance."""
+    cells = np.zeros((2, n), dtype=np.int32)
+    row, offset = np.zeros(1, dtype=np.int64), np.array([0, n])
+    return hits.p_values(row, offset, *cells, rates_of(chance), np.array([n_hits]), EVERY)[0]
+
+
 # p-values
 
 
@@ -51,16 +69,12 @@ def log_tail(q, least):
 @pytest.mark.parametrize("n", [1, 59, 61, 2_000, 10_000])
 def test_tails_are_in_reach_and_never_nan_however_extreme(n, chance):
     """Hits from none to all; p falls with the hits and is the true one where that can be held."""
-    q = np.full(n, chance)
     least = np.unique(np.clip([1, 2, 3, 60, 61, 100, n // 3, n // 2, n - 10, n - 1, n], 1, n))
-    offset = np.array([0, n])
-    row = np.zeros(1, dtype=np.int64)
-    left = np.ones(n, dtype=bool)
-    p = [hits.p_values(row, offset, q, np.array([x]), left)[0] for x in least.tolist()]
+    p = [p_value(chance, n, x) for x in least.tolist()]
     assert all(TINY <= x <= 1.0 for x in p)
     assert all(a >= b * (1 - 1e-9) for a, b in pairwise(p))
     for x, found in zip(least.tolist(), p, strict=True):
-        true = log_tail(q, x)
+        true = log_tail(np.full(n, chance), x)
         if true > math.log(TINY) + 1:
             assert math.log(found) == pytest.approx(true, abs=1e-4)
         else:
@@ -68,11 +82,9 @@ def test_tails_are_in_reach_and_never_nan_however_extreme(n, chance):
 
 
 def test_ten_thousand_hits_of_ten_thousand_are_a_bound():
-    q = np.full(10_000, 1e-4)
-    row, offset = np.zeros(1, dtype=np.int64), np.array([0, 10_000])
-    everything = np.ones(10_000, dtype=bool)
     for n_hits in (9_000, 9_990, 9_999, 10_000):
-        assert hits.p_values(row, offset, q, np.array([n_hits]), everything)[0] == TINY
+        assert p_value(1e-4, 10_000, n_hits) == TINY
+    q = np.full(10_000, 1e-4)
     assert tails.sharper_p_value(q, 1, q, 10_000, NODES, WEIGHTS) == TINY
 
 
@@ -270,15 +282,14 @@ def repeated(value, dtype, n=BEYOND + 6):
 def test_triggers_beyond_2_31_are_tallied_and_tested():
     offset = np.array([0, BEYOND, BEYOND + 6])
     row = np.array([1])
-    q, is_hit = repeated(0.25, np.float64), repeated(True, bool)
-    n, n_hits, expected, variance = hits.tally(row, offset, q, is_hit, is_hit)
+    where = repeated(0, np.int32), repeated(0, np.int32)
+    window = np.ones((1, 1), dtype=np.uint64)
+    n, n_hits, expected, variance = hits.tally(row, offset, *where, rates_of(0.25), window, EVERY)
     assert (n[0], n_hits[0], expected[0]) == (6, 6, 1.5)
     assert variance[0] == pytest.approx(6 * 0.25 * 0.75)
-    p = hits.p_values(row, offset, q, np.array([6]), is_hit)
+    p = hits.p_values(row, offset, *where, rates_of(0.25), np.array([6]), EVERY)
     assert p[0] == pytest.approx(0.25**6)
-    sums = hits.cluster_sums(
-        row, offset, repeated(3, np.int32), repeated(7, np.int32), is_hit, 5, 20
-    )
+    sums = hits.cluster_sums(row, offset, *where, repeated(True, bool), 5, 20)
     assert [int(x[0]) for x in sums[3:]] == [1, 1, 1]
 
 

@@ -179,7 +179,7 @@ def test_the_page_is_the_same_each_time_and_small(tmp_path):
 
 
 def test_more_candidates_than_the_page_takes_are_counted(tmp_path, monkeypatch):
-    monkeypatch.setattr("miner.report.page.MOST_ROWS", 10)
+    monkeypatch.setattr("miner.report.read_run.MOST_ROWS", 10)
     page = text_of(render(made_up_run(tmp_path, n_candidates=40)))
     assert "The 10 with the smallest p are here" in page
     assert page.count('<tr><th scope="row">', page.index("candidates-table")) >= 10
@@ -214,7 +214,7 @@ def test_the_workbook_holds_every_value_and_nothing_that_runs(hostile):
     book = openpyxl.load_workbook(hostile.parent / "candidates.xlsx")
     run = read_run(hostile.parent)
     assert book.sheetnames == ["candidates", "rules"]
-    for sheet, rows in ((book["candidates"], run.candidates), (book["rules"], run.rules)):
+    for sheet, rows in ((book["candidates"], run.foremost), (book["rules"], run.rules)):
         cells = list(sheet.iter_rows())
         assert [cell.value for cell in cells[0]] == list(CANDIDATE_COLUMNS)
         assert len(cells) == len(rows) + 1 > 5

@@ -59,8 +59,9 @@ class Planting:
     """Sets of alerts put on company-sessions, followed by the target with a chosen probability.
 
     ``n_sets`` counts the whole calendar; ``life`` is the share of the calendar, from and to, in
-    which the sets are followed by more than chance; ``bands`` are those the sets are put in. A
-    planting of kind "idle" has no effect: it lets the parts of another be seen on their own.
+    which the sets are followed by more than chance; ``bands`` are those the sets are put in, and
+    ``place`` the share of the calendar. A planting of kind "idle" has no effect: it lets the parts
+    of another be seen on their own.
     """
 
     types: tuple[str, ...]
@@ -69,6 +70,7 @@ class Planting:
     precision: float
     bands: tuple[str, ...] = BANDS
     life: tuple[float, float] = (0.0, 1.0)
+    place: tuple[float, float] = (0.0, 1.0)
 
 
 _BAND_PAIR = ("loan chatter", "stake creep")
@@ -89,3 +91,30 @@ PLANTINGS = (
     Planting(("borrow squeeze", "quiet bid"), "dying pair", 380, 0.28, life=(0.0, 0.6)),
 )
 DECOY = ("price jolt", "volume swell")
+
+
+@dataclass(frozen=True)
+class Fate:
+    """What becomes of a planting in the four quarters after the hunt.
+
+    ``precisions`` are those of its sets, quarter by quarter.
+    """
+
+    types: tuple[str, ...]
+    name: str
+    precisions: tuple[float, float, float, float]
+    stratum: str = "all"
+
+
+FATES = (
+    Fate(_TRIPLE, "holds", (0.38, 0.38, 0.38, 0.38)),
+    Fate(("borrow squeeze", "call skew"), "decays slowly", (0.08, 0.04, 0.0, 0.0)),
+    Fate(_BAND_PAIR, "dies at once", (0.0, 0.0, 0.0, 0.0), stratum="mid"),
+    Fate(("loan chatter", "quiet bid"), "an alert is redefined", (0.3, 0.3, 0.3, 0.3)),
+)
+FARES_ALIKE = (
+    Fate(("borrow squeeze", "call skew", "jet sighting"), "decays slowly", (0.33, 0.0, 0.0, 0.0)),
+)
+REDEFINED = "quiet bid"
+REDEFINED_FROM = "2024-05-06"
+REDEFINED_FACTOR = 3.0  # as many alerts from then on

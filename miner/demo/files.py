@@ -31,13 +31,48 @@ _OFFSET_SHARE = 0.3
 def write_tables(rng: np.random.Generator, market: Market, folder: Path) -> None:
     """Write ``alerts.parquet``, ``events.csv``, ``groups.csv`` and ``coverage.csv``."""
     pa.parquet.write_table(_alert_table(rng, market), folder / "alerts.parquet")
-    plain = pa.csv.WriteOptions(quoting_style="none")
-    for name, table in (
-        ("events.csv", _event_table(rng, market)),
-        ("groups.csv", _group_table(market.companies, market.day)),
-        ("coverage.csv", _coverage_table(market.companies, market.day)),
-    ):
-        pa.csv.write_csv(table, folder / name, plain)
+    _write_csv(_event_table(rng, market), folder / "events.csv")
+    _write_companies(market.companies, market.day, folder)
+
+
+def write_longer_tables(
+    rng: np.random.Generator,
+    before: Path,
+    later: Market,
+    companies: Companies,
+    day: NDArray[np.datetime64],
+    folder: Path,
+) -> None:
+    """Write the same tables with what came later at their ends.
+
+    Parameters
+    ----------
+    before : folder with the tables of `write_tables`, whose rows stay as they are
+    later : sessions after those
+    companies, day : of the whole time, for the groups and the coverage
+    """
+    alerts = pa.parquet.read_table(before / "alerts.parquet")
+    pa.parquet.write_table(
+        pa.concat_tables([alerts, _alert_table(rng, later)]), folder / "alerts.parquet"
+    )
+    rows = pa.BufferOutputStream()
+    pa.csv.write_csv(
+        _event_table(rng, later),
+        rows,
+        pa.csv.WriteOptions(quoting_style="none", include_header=False),
+    )
+    events = (before / "events.csv").read_bytes()
+    (folder / "events.csv").write_bytes(events + rows.getvalue().to_pybytes())
+    _write_companies(companies, day, folder)
+
+
+def _write_companies(companies: Companies, day: NDArray[np.datetime64], folder: Path) -> None:
+    _write_csv(_group_table(companies, day), folder / "groups.csv")
+    _write_csv(_coverage_table(companies, day), folder / "coverage.csv")
+
+
+def _write_csv(table: pa.Table, path: Path) -> None:
+    pa.csv.write_csv(table, path, pa.csv.WriteOptions(quoting_style="none"))
 
 
 def _alert_table(rng: np.random.Generator, market: Market) -> pa.Table:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from miner.demo.cast import ALERT_KINDS, BANDS, PLANTINGS, SECTORS, AlertKind
+from miner.demo.cast import ALERT_KINDS, BANDS, PLANTINGS, SECTORS, AlertKind, Planting
 from miner.demo.stamps import quarter_phase, weekdays
 from miner.demo.world_parts import (
     FloatArray,
@@ -28,7 +29,7 @@ LOOKBACK = 5
 HORIZON = 5
 
 _N_COMPANIES = 1200
-_N_EVENTS = 6500
+N_EVENTS = 6500
 _EVENT_EXPOSURE = 0.9
 _WITHDRAWAL_SHARE = 0.12
 
@@ -122,17 +123,35 @@ def invent_companies(rng: np.random.Generator, day: NDArray[np.datetime64]) -> C
 
 
 def invent_market(rng: np.random.Generator) -> Market:
-    """Draw the whole market: drivers first, then events and alerts, then what is planted."""
+    """Draw the market of the hunt: its companies, then what happens to them."""
     day = weekdays()
     companies = invent_companies(rng, day)
+    return draw_market(rng, day, companies, PLANTINGS, list(enumerate(ALERT_KINDS)), N_EVENTS)
+
+
+def draw_market(
+    rng: np.random.Generator,
+    day: NDArray[np.datetime64],
+    companies: Companies,
+    plantings: Sequence[Planting],
+    kinds: Sequence[tuple[int, AlertKind]],
+    n_events: float,
+) -> Market:
+    """Draw what happens to given companies: drivers, what is planted, events, alerts.
+
+    Parameters
+    ----------
+    kinds : number in `ALERT_KINDS` and the kind as it is drawn; a number may come twice
+    n_events : to expect, without those that are planted
+    """
     level = (
         season_level(quarter_phase(day), 0.8)
         * shock_level(rng, 1, day.size, 0.8)
         * shock_level(rng, len(SECTORS), day.size, 0.7, every=90)
     )
-    planted_alerts, planted_events = _plant(rng, day, companies)
+    planted_alerts, planted_events = _plant(rng, day, companies, plantings)
 
-    entity, session = _intensity(companies, level, _EVENT_EXPOSURE).draw(rng, _N_EVENTS)
+    entity, session = _intensity(companies, level, _EVENT_EXPOSURE).draw(rng, n_events)
     event = distinct(
         np.concatenate((entity, planted_events[0])) * day.size
         + np.concatenate((session, planted_events[1]))
@@ -140,7 +159,7 @@ def invent_market(rng: np.random.Generator) -> Market:
     target_entity, target_session = event // day.size, event % day.size
 
     points = [planted_alerts]
-    for k, kind in enumerate(ALERT_KINDS):
+    for k, kind in kinds:
         entity, session = _background(rng, kind, day, companies, level)
         if kind.echo_rate:
             source, echo = follow_ups(rng, target_session - 1, kind.echo_rate)
@@ -200,17 +219,22 @@ def _background(
 
 
 def _plant(
-    rng: np.random.Generator, day: NDArray[np.datetime64], companies: Companies
+    rng: np.random.Generator,
+    day: NDArray[np.datetime64],
+    companies: Companies,
+    plantings: Sequence[Planting],
 ) -> tuple[tuple[IntArray, IntArray, IntArray], tuple[IntArray, IntArray]]:
     """Alerts (company, kind, session) of every planting, and the events (company, session)."""
     number = {kind.name: k for k, kind in enumerate(ALERT_KINDS)}
     slots = planting_slots(rng, companies.start, companies.stop, LOOKBACK, HORIZON)
     band = companies.band_et[slots.entity, slots.session]
     alerts, events = [], []
-    for planting in PLANTINGS:
+    for planting in plantings:
         size = len(planting.types)
         kinds = np.array([number[name] for name in planting.types])
         is_wanted = np.isin(band, [BANDS.index(name) for name in planting.bands])
+        first, last = (share * day.size for share in planting.place)
+        is_wanted &= (slots.session >= first) & (slots.session < last)
         for k in kinds:
             # The whole look-back has to be published, not just the slot.
             is_wanted &= is_published(

@@ -1,4 +1,4 @@
-"""Writes the demo, hunts in it, and sets what was planted beside what was found."""
+"""Writes the demo, hunts and reviews in it, and sets what was planted beside what was found."""
 
 from __future__ import annotations
 
@@ -11,6 +11,7 @@ import numpy as np
 
 from miner.assemble import assemble
 from miner.columns import EXPLAINED, JOINER, POOLED
+from miner.demo.quarters import Year, play_quarters, year_lines
 from miner.demo.scenario import DEFAULT_SEED, Truth, write_demo
 from miner.errors import OutputError, explain
 from miner.hunting import Hunt, hunt, split_sessions
@@ -27,22 +28,26 @@ SHUFFLES = 99
 
 @dataclass(frozen=True)
 class Played:
-    """A demo that was written and hunted in, and the decoy's two p-values."""
+    """A demo that was written and hunted in, the decoy's two p-values, and the four quarters that
+    came after, None where they were left out."""
 
     truth: Truth
     result: Hunt
     decoy_shuffle: float
     decoy_margins: float
+    year: Year | None = None
 
 
 def play(
     folder: Path,
     *,
     seed: int | None = None,
+    with_quarters: bool = True,
     n_workers: int | None = None,
     progress: Progress = silent,
 ) -> Played:
-    """Write the scenario into ``folder``, hunt in it, and put the decoy before the plain shuffle.
+    """Write the scenario into ``folder``, hunt in it, put the decoy before the plain shuffle, and
+    review the rules at the end of each of the four quarters that follow.
 
     Raises
     ------
@@ -63,12 +68,17 @@ def play(
         )
     n_workers = n_workers or n_default()
     progress("inventing a market")
-    truth = write_demo(folder, DEFAULT_SEED if seed is None else seed)
+    seed = DEFAULT_SEED if seed is None else seed
+    truth = write_demo(folder, seed)
     result = hunt(truth.study, folder / "run", n_workers=n_workers, replace=True, progress=progress)
     progress("shuffling the decoy")
     decoy = result.candidates.query("stratum == @POOLED and combination == @truth.decoy")
     margins = float(decoy["p_value"].iloc[0]) if len(decoy) else 1.0
-    return Played(truth, result, _shuffled_p(truth, n_workers), margins)
+    shuffled = _shuffled_p(truth, n_workers)
+    year = None
+    if with_quarters:
+        year = play_quarters(folder, seed, n_workers=n_workers, progress=progress)
+    return Played(truth, result, shuffled, margins, year)
 
 
 def _shuffled_p(truth: Truth, n_workers: int) -> float:
@@ -113,6 +123,9 @@ def demo_lines(played: Played) -> Iterator[str]:
         f"(p {p_text(played.decoy_margins)}).",
         WIDTH,
     )
+    if played.year is not None:
+        yield ""
+        yield from year_lines(played.year)
 
 
 def _found(result: Hunt, combination: str, stratum: str) -> str:

@@ -11,6 +11,7 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from miner import placing
 from miner.columns import JOINER, POOLED
@@ -23,6 +24,11 @@ from miner.seeds import stream
 
 DEFAULT_SEED = 7
 HOLDOUT_START = "2022-07-01"
+PRICES_TEXT = """
+[prices]
+source = "prices.parquet"     # daily bars: what would trades on the rules have earned?
+jumps = "keep"                # an approach can lift a price by that much
+"""
 
 
 @dataclass(frozen=True)
@@ -74,7 +80,7 @@ def write_demo(folder: Path, seed: int = DEFAULT_SEED) -> Truth:
     with placing.aside(folder / "demo") as aside:
         write_tables(rng, market, aside)
         write_prices(stream(seed, "demo", "prices"), market, aside)
-        (aside / study.name).write_text(_study_text(market, seed), encoding="utf-8")
+        (aside / study.name).write_text(study_text(market.day, seed), encoding="utf-8")
         (aside / "truth.json").write_text(json.dumps(record, indent=2) + "\n", encoding="utf-8")
         placing.put_files(aside, folder)
     return truth
@@ -110,7 +116,9 @@ def _life_dates(market: Market, planting: Planting) -> tuple[str, str]:
     return str(market.day[int(np.ceil(first))]), str(market.day[int(np.ceil(last)) - 1])
 
 
-def _study_text(market: Market, seed: int) -> str:
+def study_text(day: NDArray[np.datetime64], seed: int, *, has_prices: bool = True) -> str:
+    """The settings of a study of the market over the sessions ``day``."""
+    prices = PRICES_TEXT if has_prices else ""
     close = f"{CLOSE_SECONDS // 3600:02d}:{CLOSE_SECONDS // 60 % 60:02d}"
     return f'''\
 # An invented market. No company, sector or alert type in it exists.
@@ -134,17 +142,13 @@ peers = "sector"              # the null holds each sector's calendar of events 
 
 [coverage]
 source = "coverage.csv"       # who is listed when, and which alert types exist for it
-
-[prices]
-source = "prices.parquet"     # daily bars: what would trades on the rules have earned?
-jumps = "keep"                # an approach can lift a price by that much
-
+{prices}
 [sessions]
 calendar = "weekdays"
 close = "{close}"               # later stamps belong to the next session
 timezone = "{TIMEZONE}"    # of the close and of stamps without an offset
-start = "{market.day[0]}"
-end = "{market.day[-1]}"
+start = "{day[0]}"
+end = "{day[-1]}"
 
 [windows]
 lookback = {LOOKBACK}                  # sessions within which a combination has to be complete

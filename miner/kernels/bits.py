@@ -55,8 +55,16 @@ def pack(row, session, bits_rw):
 def fill_ranges(row, start_t, stop_t, bits_rw):
     """Set bits ``start_t[i] .. stop_t[i] - 1`` of ``bits_rw[row[i]]`` in place, for every i."""
     for i in range(row.size):
-        for t in range(start_t[i], stop_t[i]):
-            bits_rw[row[i], t >> 6] |= ONE << np.uint64(t & 63)
+        if start_t[i] >= stop_t[i]:
+            continue
+        first, last = start_t[i] >> 6, (stop_t[i] - 1) >> 6
+        for w in range(first, last + 1):
+            word = ALL
+            if w == first:
+                word &= ALL << np.uint64(start_t[i] & 63)
+            if w == last:
+                word &= ALL >> np.uint64(63 - ((stop_t[i] - 1) & 63))
+            bits_rw[row[i], w] |= word
 
 
 @kernel

@@ -67,9 +67,10 @@ def read_query(
         url = _located(sqlalchemy.make_url(settings.source), folder, label)
         engine = sqlalchemy.create_engine(url, poolclass=sqlalchemy.NullPool)
         options = {"stream_results": True, "no_parameters": True, "max_row_buffer": _CHUNK_ROWS}
-        with engine.connect().execution_options(**options) as connection:
+        with engine.connect() as connection:
             for statement in _READ_ONLY.get(url.get_backend_name(), ()):
                 connection.exec_driver_sql(statement)
+            connection.execution_options(**options)  # from here on rows are streamed
             result = connection.exec_driver_sql(settings.query or "")
             if not result.returns_rows:
                 raise _no_select(label, "none")

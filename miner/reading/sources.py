@@ -55,6 +55,7 @@ class Source:
     def _from_files(self) -> Iterator[Chunk]:
         files = find_files(self.settings.source, self.folder, self.wanted.table)
         self.paths.update(files)
+        before = {label: _state_of(path) for label, path in files.items()}
         with ThreadPoolExecutor(max_workers=1) as pool:  # hashing runs beside reading
             hashes = {label: pool.submit(sha256_of, path) for label, path in files.items()}
             try:
@@ -63,6 +64,20 @@ class Source:
                 self.fingerprints.update((label, h.result()) for label, h in hashes.items())
             finally:
                 pool.shutdown(wait=False, cancel_futures=True)
+        for label, path in files.items():
+            if _state_of(path) != before[label]:
+                found = "one that another program has written to meanwhile"
+                advice = "Start again when it is complete, or read a copy."
+                raise TableError(explain(label, "file", "stay as it is", found, advice))
+
+
+def _state_of(path: Path) -> tuple[int, ...]:
+    """What tells whether a file has been written to; nothing for one that is gone."""
+    try:
+        info = path.stat()
+    except OSError:
+        return ()
+    return info.st_ino, info.st_size, info.st_mtime_ns
 
 
 def find_files(source: str, folder: Path, table: str) -> dict[str, Path]:

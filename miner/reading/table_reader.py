@@ -10,6 +10,7 @@ from zoneinfo import ZoneInfo
 import numpy as np
 import pyarrow as pa
 
+from .. import memory_estimate
 from ..errors import TableError, explain
 from ..settings import Study, TableSettings
 from .bad_rows import BadRows, Fault
@@ -58,6 +59,7 @@ class TableReader:
             columns = {name: chunk.columns.get(name, empty) for name in self.wanted.columns}
             yield Chunk(chunk.file, chunk.first_row, columns, chunk.n_rows)
             self.rows_read += chunk.n_rows
+            memory_estimate.refuse(memory_estimate.of_rows(self.rows_read))
             self.stop_row_of[chunk.file] = self.rows_read
             if progress is not None:
                 progress(self.rows_read)

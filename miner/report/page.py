@@ -11,7 +11,6 @@ from miner.columns import CONFIRMED, REFUTED, UNDERPOWERED
 from miner.report import charts, html, sections, words
 from miner.report.read_run import Row, Run
 
-MOST_ROWS = 1_500
 MOST_EXPLAINED = 12
 
 
@@ -140,14 +139,10 @@ def _rule_list(orders: list[int]) -> tuple[str, Markup]:
 
 def _candidates(run: Run) -> dict[str, Any]:
     """Rows of the big table, the smallest p first."""
-    rows = sorted(
-        run.candidates,
-        key=lambda c: (c["p_value"], c["target"], c["stratum"], c["combination"]),
-    )
-    shown = rows[:MOST_ROWS]
+    shown = run.foremost
     return {
         "rows": [(row, row["rule_order"] or _order_of(run, row)) for row in shown],
-        "n": len(rows),
+        "n": len(run.candidates),
         "verdicts": sorted({row["verdict"] for row in shown}),
         "targets": sorted({row["target"] for row in shown}),
         "strata": sorted({row["stratum"] for row in shown}),

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
@@ -15,6 +16,8 @@ from miner.errors import OutputError, explain
 Row = dict[str, Any]
 
 FORMAT = 1
+UNDEFINED = frozenset(("", "nan", "inf", "-inf"))
+MOST_ROWS = 1_500
 QUARTERS = {
     "rule_order": "integer",
     "triggers": "integer",
@@ -33,6 +36,15 @@ class Run:
     candidates: list[Row]
     rules: list[Row]
     quarters: list[Row]
+
+    @cached_property
+    def foremost(self) -> list[Row]:
+        """The candidates that people are shown: those with the smallest p, in that order."""
+        rows = sorted(
+            self.candidates,
+            key=lambda c: (c["p_value"], c["target"], c["stratum"], c["combination"]),
+        )
+        return rows[:MOST_ROWS]
 
     @cached_property
     def rule_of(self) -> dict[str, int]:
@@ -84,15 +96,17 @@ def _no_run(folder: Path, found: str) -> OutputError:
 def read_table(path: Path, kinds: dict[str, str]) -> list[Row]:
     """Rows of a csv file, columns of kind "integer" and "number" as such, others as text."""
     with path.open(encoding="utf-8", newline="") as lines:
-        return [
-            {key: _value(text, kinds.get(key, "text")) for key, text in row.items()}
-            for row in csv.DictReader(lines)
+        reader = csv.reader(lines)
+        names = next(reader, [])
+        columns = [
+            _values(texts, kinds.get(name, "text"))
+            for name, texts in zip(names, zip(*reader, strict=True), strict=False)
         ]
+    return [dict(zip(names, row, strict=True)) for row in zip(*columns, strict=True)]
 
 
-def _value(text: str, kind: str) -> Any:
+def _values(texts: Iterable[str], kind: str) -> list[Any]:
     if kind == "text":
-        return text
-    if text in ("", "nan", "inf", "-inf"):
-        return None
-    return int(text) if kind == "integer" else float(text)
+        return list(texts)
+    number = int if kind == "integer" else float
+    return [None if text in UNDEFINED else number(text) for text in texts]

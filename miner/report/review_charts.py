@@ -93,7 +93,7 @@ def _log(e: float | None) -> float | None:
 def _curve(rule: Row, key: str, last: str) -> list[tuple[float, float | None]]:
     """From 1 at adoption to what the quarter's end says, as days and powers of ten."""
     first = min([rule["adopted"], *(point["date"] for point in rule["evidence"])])
-    points = [(_day(first), 0.0)]
+    points: list[tuple[float, float | None]] = [(_day(first), 0.0)]
     points += [(_day(point["date"]), _log(point[key])) for point in rule["evidence"]]
     side = rule["works" if key == "e_works" else "broken"]
     return [*points, (_day(last), _log(side["e"]) if side else None)]
@@ -113,7 +113,9 @@ def evidence_strip(rule: Row, last: str, watch_at: float, retire_at: float) -> M
     plot = Plot((first, end), (-1, high), width=120, height=44, margin=(4, 4, 4, 4))
     for at, kind in ((watch_at, "watchline"), (retire_at, "retireline")):
         plot.line([(first, math.log10(at)), (end, math.log10(at))], kind)
-    inside = [(x, None if y is None else min(max(y, -1.0), high)) for x, y in points]
+    inside: list[tuple[float, float | None]] = [
+        (x, None if y is None else min(max(y, -1.0), high)) for x, y in points
+    ]
     plot.line(inside, "seenline")
     e, top = rule["broken"]["e"], rule["broken"]["e_highest"]
     return plot.done(
@@ -153,8 +155,8 @@ def evidence_plot(
             plot.dot(x, y, "stray", 1.6)
     for i, (value, text, _) in enumerate(marks):
         below = i < len(marks) - 1  # the last one's words stand above its line
-        at = plot.py(math.log10(value)) + (11 if below else -3)
-        plot.text(plot.left + 4, at, text, "start", "halo")
+        foot = plot.py(math.log10(value)) + (11 if below else -3)
+        plot.text(plot.left + 4, foot, text, "start", "halo")
     plot.x_axis(_quarter_ticks(rule["quarters"], first))
     what = "it still works" if key == "e_works" else "its promise is broken"
     return plot.done(
@@ -208,22 +210,20 @@ def rule_plot(rule: Row) -> Markup:
         kind = "dot late" if is_now else "dot early"
         plot.dot(x, q["precision"], kind, 1.8 + 3.0 * (q["triggers"] / most) ** 0.5)
     step = -(-(last - first + 1) // 6)
-    plot.x_axis(
-        [(x, f"{x // 4}Q{x % 4 + 1}"[2:]) for x in range(last, first - 1, -step)][::-1]
-    )
+    plot.x_axis([(x, f"{x // 4}Q{x % 4 + 1}"[2:]) for x in range(last, first - 1, -step)][::-1])
     told = [
         f"{q['quarter']} {percent(q['precision'])} of {q['triggers']}, expected "
         f"{percent(_expected(q))}"
         for q in quarters
     ]
     for place, (part, name) in enumerate(stretches):
-        x = last + 0.6 + gap * (place + 0.6)
-        plot.text(plot.px(x), plot.height - plot.bottom + 13, name)
+        at = last + 0.6 + gap * (place + 0.6)
+        plot.text(plot.px(at), plot.height - plot.bottom + 13, name)
         if part["precision"] is None:
             continue
         if part["low"] is not None and part["high"] is not None:
-            plot.line([(x, part["low"]), (x, min(part["high"], top))], "range late")
-        plot.dot(x, part["precision"], "dot late", 4)
+            plot.line([(at, part["low"]), (at, min(part["high"], top))], "range late")
+        plot.dot(at, part["precision"], "dot late", 4)
         told.append(f"{name} {percent(part['precision'])} ({span(part['low'], part['high'])})")
     if rule["promise"] is not None:
         told.append(f"promise {percent(rule['promise'])}")

@@ -35,9 +35,9 @@ def lead_words(review: Row) -> str:
         return "The book holds no rule to review."
     n, counts = len(review["rules"]), review["counts"]
     parts = [
-        f"too early to say for {count(counts[s])}" if s == "too early" else f"{s} {count(counts[s])}"
-        for s in URGENCY
-        if counts.get(s)
+        f"{'too early to say for' if status == 'too early' else status} {count(counts[status])}"
+        for status in URGENCY
+        if counts.get(status)
     ]
     return f"Of {some(n, 'rule')} reviewed: {listed(parts)}."
 

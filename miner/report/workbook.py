@@ -22,7 +22,7 @@ SHARES = frozenset(name for name in CANDIDATE_COLUMNS if "precision" in name) | 
 
 
 def write_workbook(run: Run, path: Path) -> None:
-    """Write ``candidates`` and ``rules`` as two sheets; every text stays a text."""
+    """Write the foremost candidates and the rules as two sheets; every text stays a text."""
     options = {
         "strings_to_formulas": False,
         "strings_to_urls": False,
@@ -38,7 +38,7 @@ def write_workbook(run: Run, path: Path) -> None:
             "number": book.add_format({"num_format": "0.000"}),
             "p": book.add_format({"num_format": "0.0E+00"}),
         }
-        for title, rows in (("candidates", run.candidates), ("rules", run.rules)):
+        for title, rows in (("candidates", run.foremost), ("rules", run.rules)):
             _write_sheet(book.add_worksheet(title), rows, formats)
 
 

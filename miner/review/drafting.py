@@ -96,15 +96,15 @@ def draft_of(
 def _whole_quarters(
     seen: Seen, computed: Mapping[str, list[Trigger]], adopted: str
 ) -> dict[str, list[Trigger]]:
-    """Without the quarter in which the study's calendar begins, where the rule is older: what it
-    did before that quarter's first session cannot be seen."""
+    """Without an earlier quarter in which the study's calendar begins, where the rule is older:
+    what it did before that quarter's first session cannot be seen."""
     dates = seen.inputs.calendar.dates
     begin = str(dates[0])
     is_cut = adopted < begin and begin != start_of(quarter_name(begin))
     return {
         name: mine
         for name, mine in computed.items()
-        if not (is_cut and name == quarter_name(begin))
+        if not (is_cut and name == quarter_name(begin)) or name == seen.quarter.name
     }
 
 

@@ -9,6 +9,7 @@ from pathlib import Path
 
 from miner.assemble import assemble
 from miner.ledger import Item, Turn, login_name, open_ledger
+from miner.ledger.kinds import check_text
 from miner.ledger.making import hunt_item
 from miner.review import folder as review_folder
 from miner.review.drafting import draft_of, in_book
@@ -67,10 +68,12 @@ def review(
     if not isinstance(study, Study):
         study = load_study(study)
     n_workers = n_workers or n_default()
-    desk = Desk(book_path, str(ledger), who or login_name(), why)
+    desk = Desk(book_path, str(ledger), login_name() if who is None else who, why)
+    check_text(desk.who, "review", "who")
+    check_text(desk.why, "review", "why")
+    inputs = assemble(study, progress)
+    chosen = quarter_to_review(quarter, study, inputs.calendar)
     with open_ledger(ledger) as opened:
-        inputs = assemble(study, progress)
-        chosen = quarter_to_review(quarter, study, inputs.calendar)
         seen = look(inputs, rule_book, chosen, opened, with_hunt, n_workers, progress)
         progress("weighing")
         with opened.exclusive() as turn:

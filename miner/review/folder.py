@@ -10,6 +10,7 @@ import pandas as pd
 
 from miner import placing
 from miner.errors import OutputError, explain
+from miner.report import review_page
 from miner.review.records import Review
 from miner.review.tables import tables
 
@@ -42,7 +43,7 @@ def check_free(folder: Path, replace: bool) -> None:
 
 
 def write(review: Review, folder: Path, replace: bool = False) -> None:
-    """Write a review: ``review.json`` and its tables as csv.
+    """Write a review: ``review.json``, its tables as csv, and its page.
 
     Raises
     ------
@@ -57,6 +58,7 @@ def write(review: Review, folder: Path, replace: bool = False) -> None:
             (aside / RECORD).write_text(record, encoding="utf-8")
             for name, table in tables(review).items():
                 write_table(table, aside / f"{name}.csv")
+            review_page.render_into(aside)
             placing.put_folder(aside, whole)
     except OSError as error:
         raise _unwritable(folder, error) from error

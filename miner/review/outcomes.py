@@ -14,7 +14,6 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from miner import workers
-from miner.kernels import hits as kernels
 from miner.nulls.margins import fit_margins
 from miner.panel import Labels, Panel
 from miner.review.quarters import Quarter
@@ -150,7 +149,7 @@ def _judge(
         case = make_case(target, unit, part.events[target])
         margins = fit_margins(unit.is_open_et, case.is_window_et, part.peers, law=panel.law)
         e, t = entity[mine], session[mine] - np.int32(offset)
-        is_hit[mine] = kernels.look_up(e, t, case.is_window_et)
+        is_hit[mine] = case.is_window_et[e, t]
         rate[mine] = margins.rates(e, t)
 
     workers.in_order(judge, range(len(quarters)), n_workers)

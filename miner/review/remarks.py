@@ -11,6 +11,7 @@ from miner.review.outcomes import is_known
 
 
 def remarks(seen: Seen, history: History, drafts: Sequence[Draft]) -> list[str]:
+    """Warnings of the study, and what a rule's past, its words or its tests leave open."""
     found = list(seen.inputs.study.warnings)
     settings = seen.inputs.study.review
     for rule, draft in zip(seen.rules, drafts, strict=True):

@@ -35,8 +35,8 @@ def review_lines(review: Review) -> Iterator[str]:
     if review.rules:
         yield ""
         yield (
-            "Rules: hits of closed triggers this quarter and since adoption, expected share, "
-            "promise, and evidence"
+            "Rules: hits of closed triggers this quarter and since adoption, share expected, and "
+            "evidence"
         )
         yield (
             f"(e-values: above {review.watch_at:g} watch, from {1 / review.alpha:g} retire) that "

@@ -86,7 +86,8 @@ def check_free(path: Path, replace: bool) -> None:
                 str(path),
                 "not exist yet",
                 "a file that does",
-                "Name another file, or allow replacing this one (--replace).",
+                "Name another file, or allow replacing this one: --replace, in Python "
+                "replace=True.",
             )
         )
 

@@ -58,7 +58,7 @@ def change_points(
 
     Parameters
     ----------
-    count_kw : int [types, weeks], alerts; the last week is the last that may be looked at
+    count_kw : int [types, weeks], alerts, best 104 weeks; the last may be looked at still
     exposure_w : float [weeks], above 0: sessions in the week, or covered entity-sessions
     n_recent : weeks; a change needs four weeks to show, so its first week is one of the
         ``n_recent`` that end with the fourth last
@@ -140,17 +140,16 @@ def _wander(count_dw: np.ndarray, expected_dw: np.ndarray) -> tuple[np.ndarray, 
 
 def _series(
     expected_w: np.ndarray,
-    variance: float,
-    like: float,
+    variance_d: np.ndarray,
+    like_d: np.ndarray,
     random: np.random.Generator,
-    n_draws: int,
 ) -> np.ndarray:
     """Counts [draws, weeks]: the factor is the exponential of an autoregression of order one."""
-    sd = np.sqrt(np.log1p(variance))
-    noise_wd = random.standard_normal((expected_w.size, n_draws))
+    sd_d = np.sqrt(np.log1p(variance_d))
+    noise_wd = random.standard_normal((expected_w.size, variance_d.size))
     for w in range(1, expected_w.size):
-        noise_wd[w] = like * noise_wd[w - 1] + np.sqrt(1 - like**2) * noise_wd[w]
-    return random.poisson(expected_w * np.exp(sd * noise_wd.T - sd**2 / 2))
+        noise_wd[w] = like_d * noise_wd[w - 1] + np.sqrt(1 - like_d**2) * noise_wd[w]
+    return random.poisson(expected_w * np.exp(sd_d * noise_wd - sd_d**2 / 2).T)
 
 
 def _draw(
@@ -164,15 +163,19 @@ def _draw(
 ) -> np.ndarray:
     """Series without a change, as variable and as like the week before as the weeks before.
 
-    Estimates are put right by their own bias in series drawn from them.
+    Estimates are put right by their own bias in series drawn from them, and every series is drawn
+    from estimates that miss as those of the drawn series did.
     """
     variance, like = (
         float(a[0]) for a in _wander(count_w[None, :n_before], expected_w[None, :n_before])
     )
-    first = variance, max(like, 0.0)
-    pilot_dw = _series(expected_w, *first, random, PILOT)
+    flat_d = np.full(PILOT, 1.0)
+    pilot_dw = _series(expected_w, variance * flat_d, max(like, 0.0) * flat_d, random)
     again_dw = _expected(pilot_dw, exposure_w, season, n_before)
     variance_d, like_d = _wander(pilot_dw[:, :n_before], again_dw[:, :n_before])
     variance = max(2 * variance - float(variance_d.mean()), variance)
-    like = min(max(2 * like - float(like_d.mean()), like, 0.0), MOST_LIKE)
-    return _series(expected_w, variance, like, random, n_draws)
+    like = max(2 * like - float(like_d.mean()), like)
+    missed = random.integers(0, PILOT, n_draws)
+    variance_d = np.maximum(variance + (variance_d - variance_d.mean())[missed], 0.0)
+    like_d = np.clip(like + (like_d - like_d.mean())[missed], 0.0, MOST_LIKE)
+    return _series(expected_w, variance_d, like_d, random)

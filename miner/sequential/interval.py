@@ -1,7 +1,7 @@
 """Hands on an interval for a precision that may be looked at at any time: a confidence sequence.
 
 It holds every rate that the two-sided e-process does not speak against at 1 / alpha. Under a rate p
-and an alternative q, a cluster with a share s of hits gives s q / p + (1 - s) (1 - q) / (1 - p). The
+and an alternative q, a cluster with a share s of hits gives s q / p + (1 - s)(1 - q) / (1 - p). The
 log of the mixed product is convex in p, and at most 0 at the mean of the clusters' shares: the
 rates that are left are an interval around that mean.
 """

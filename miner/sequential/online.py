@@ -22,11 +22,12 @@ CANDIDATE_DISCARD = {"saffron": (0.5, 1.0), "addis": (0.25, 0.5)}
 class Tested(NamedTuple):
     """One hypothesis that was tested."""
 
-    __test__ = False  # pytest would take the name for a test class
-
     p: float
     level: float
     is_rejected: bool
+
+
+Tested.__test__ = False  # type: ignore[attr-defined]  # pytest would take it for a test class
 
 
 def next_levels(
@@ -68,7 +69,10 @@ def next_levels(
 
 
 def test_batch(
-    procedure: Procedure, history: Sequence[Tested], p: np.ndarray, alpha: float = 0.05
+    procedure: Procedure,
+    history: Sequence[Tested],
+    p: np.ndarray,
+    alpha: float = 0.05,  # noqa: PT028
 ) -> tuple[Tested, ...]:
     """Test the hypotheses of one batch, in the order given; see ``next_levels``."""
     p = np.asarray(p, dtype=float)

@@ -102,7 +102,7 @@ def write_trades(result: TradeTable, folder: str | Path, *, replace: bool = Fals
                 str(folder / there[0]),
                 "not exist yet",
                 "a file that does",
-                "Name another folder, or allow replacing it (--replace).",
+                "Name another folder, or allow replacing it: --replace, in Python replace=True.",
             )
         )
     try:

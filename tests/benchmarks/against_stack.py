@@ -17,6 +17,7 @@ from tests.benchmarks.tables import gigabytes, seconds, table
 
 COUNTS = ("triggers", "hits")
 RATES = ("precision", "base_rate")
+AFTER_SEARCH = "placebo worlds"  # the first stage that the stack has no part of
 
 
 @dataclass(frozen=True)
@@ -91,7 +92,8 @@ def _text(ours: Hunted, stack: Stack, candidates: pd.DataFrame) -> list[str]:
     a_draw = used["draws"] / n_draws
     # of one core, so that on a quiet machine its processor time is its time
     enough = stack.use.cpu - used["draws"] + n_needed * a_draw
-    search = ours.seconds["reading"] + ours.seconds["searching"]
+    stages = list(ours.seconds)
+    search = sum(ours.seconds[name] for name in stages[: stages.index(AFTER_SEARCH)])
     rows = [
         [name, seconds(value), seconds(n_needed * a_draw) if name == "draws" else seconds(value)]
         for name, value in {"start": stack.use.cpu - sum(used.values()), **used}.items()

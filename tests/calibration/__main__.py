@@ -18,7 +18,7 @@ def main() -> None:
     parser.add_argument("--form", choices=FORMS, default="short")
     parser.add_argument("--part", choices=list(PARTS), nargs="*", help="default: every part")
     parser.add_argument("--lines", type=Path, default=Path("build/calibration"))
-    parser.add_argument("--report", type=Path, metavar="FOLDER", help="write calibration.md there")
+    parser.add_argument("--report", type=Path, metavar="FOLDER", help="write the pages there")
     parser.add_argument("--minutes", type=float, default=float("inf"), help="per part, at most")
     asked = parser.parse_args()
     folder = asked.lines / asked.form
@@ -34,8 +34,12 @@ def main() -> None:
                 print(f"  {n} runs, the last {row['key']}", flush=True)
     if asked.report is not None:
         from tests.calibration.report import write_report
+        from tests.calibration.tables_of_review import write_review
 
-        write_report(folder, asked.report, lines.versions())
+        if (folder / "review.jsonl").exists():
+            write_review(folder, asked.report)
+        if asked.part != ["review"]:
+            write_report(folder, asked.report, lines.versions())
 
 
 if __name__ == "__main__":

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from tests.calibration import coverage, hunts, joint, laws, level, placebo, power, practice
+from tests.calibration import coverage, hunts, joint, laws, level, placebo, power, practice, review
 from tests.calibration.level import Tasks
 
 FORMS = ("short", "full")
@@ -46,6 +46,10 @@ def _practice(is_full: bool) -> Tasks:
     return practice.tasks(20 if is_full else 1)
 
 
+def _review(is_full: bool) -> Tasks:
+    return review.tasks(16 if is_full else 1)
+
+
 PARTS: dict[str, Callable[[bool], Tasks]] = {
     "level": _level,
     "laws": _laws,
@@ -56,4 +60,5 @@ PARTS: dict[str, Callable[[bool], Tasks]] = {
     "intervals": _intervals,
     "placebo": _placebo,
     "practice": _practice,
+    "review": _review,
 }

@@ -42,4 +42,4 @@ def write_report(folder: Path, reports: Path, versions: Mapping[str, str]) -> No
     (reports / "calibration.md").write_text("\n\n".join(text) + "\n", encoding="utf-8")
 
 
-NO_WORLDS = ("laws", "intervals")
+NO_WORLDS = ("laws", "intervals", "review")

@@ -14,7 +14,9 @@ add = GROUP.add
 QUERY = "select who entity, at time, kind type from notes"
 
 
-def database(query: str | None = QUERY, source: str = "sqlite:///desk.db") -> Callable:
+def database(
+    query: str | None = QUERY, source: str = "sqlite:///desk.db"
+) -> Callable[[Folder], None]:
     """The alerts in a database."""
 
     def write(folder: Folder) -> None:

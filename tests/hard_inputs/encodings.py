@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 from .case import Group, answer, unreadable
 from .folder import Folder, csv_text
 from .plain import ALERTS
@@ -12,7 +14,7 @@ PLAIN = csv_text(ALERTS)
 ACCENTED = csv_text([(entity.replace("firm03", "Société"), *rest) for entity, *rest in ALERTS])
 
 
-def encoded(encoding: str, text: str = PLAIN):
+def encoded(encoding: str, text: str = PLAIN) -> Callable[[Folder], None]:
     """Write the alerts in an encoding."""
     return lambda folder: folder.text("alerts.csv", text, encoding)
 

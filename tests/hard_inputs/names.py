@@ -1,4 +1,4 @@
-"""Names of entities and types: what looks like a number, a missing value, a formula, another name."""
+"""Names that look like numbers, missing values, formulas or other names."""
 
 from __future__ import annotations
 
@@ -14,7 +14,9 @@ add = GROUP.add
 ACUTE, HEBREW, LONG = "firm00\u0301", "\u05d7\u05d1\u05e8\u05d4", "x" * 300
 
 
-def called(names: Mapping[str, str], kinds: Mapping[str, str] | None = None) -> Callable:
+def called(
+    names: Mapping[str, str], kinds: Mapping[str, str] | None = None
+) -> Callable[[Folder], None]:
     """Give entities and alert types other names, in alerts and events alike."""
 
     def write(folder: Folder) -> None:

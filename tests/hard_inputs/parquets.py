@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import decimal
+from collections.abc import Callable
 
 import pyarrow as pa
 
@@ -18,7 +19,7 @@ ENTITY, TIME, TYPE = (pa.array(column) for column in zip(*ALERTS, strict=True))
 STAMPS = [dt.datetime.fromisoformat(stamp) for _, stamp, _ in ALERTS]
 
 
-def stored(**changed: object):
+def stored(**changed: object) -> Callable[[Folder], None]:
     """Write the alerts as parquet, some columns as given."""
 
     def write(folder: Folder) -> None:
@@ -28,7 +29,7 @@ def stored(**changed: object):
     return write
 
 
-def cut(keep: float):
+def cut(keep: float) -> Callable[[Folder], None]:
     """Write only the first part of the file."""
 
     def write(folder: Folder) -> None:

@@ -14,7 +14,9 @@ N_ALERTS, N_EVENTS = len(ALERTS), len(EVENTS)
 EVERY_CELL = [(e, f"{day(t)} 10:00:00", "upset") for t in range(N_DAYS) for e in ENTITIES]
 
 
-def logs(alerts: list[Row] | None = None, events: list[Row] | None = None) -> Callable:
+def logs(
+    alerts: list[Row] | None = None, events: list[Row] | None = None
+) -> Callable[[Folder], None]:
     """Other rows in one log or both."""
 
     def write(folder: Folder) -> None:

@@ -11,7 +11,7 @@ from .plain import ALERTS, ENTITIES, EVENTS, day
 GROUP = Group("Groups and coverage")
 add = GROUP.add
 SPAN = ("entity", "start", "end", "sector")
-SECTOR = {name: ("north", "south")[k % 2] for k, name in enumerate(ENTITIES)}
+SECTOR = {name: "south" if name == ENTITIES[-1] else "north" for name in ENTITIES}
 ALWAYS = [(e, "", "", SECTOR[e]) for e in ENTITIES]
 N_FIRM00 = {
     name: sum(row[0] == "firm00" for row in rows)

@@ -9,10 +9,19 @@ import pytest
 
 import miner
 
+from . import spans
 from .case import Answer, Case, Refused
 from .page import page
 from .plain import ALERTS, EVENTS
-from .running import ROOT, assert_refused, in_process, in_subprocess, message_of, run_case
+from .running import (
+    ROOT,
+    assert_refused,
+    in_process,
+    in_subprocess,
+    message_of,
+    results_of,
+    run_case,
+)
 from .table import CASES
 
 IN_A_PROCESS_OF_ITS_OWN = (
@@ -61,6 +70,14 @@ def test_the_plain_study_is_not_trivial() -> None:
     assert (len(ALERTS), len(EVENTS)) == (430, 120)
     assert len(set(ALERTS)) == 430
     assert len(set(EVENTS)) == 120
+
+
+def test_groups_that_change_make_a_difference(tmp_path: Path) -> None:
+    found = [
+        results_of(write, tmp_path / f"{k}")["candidates.csv"]
+        for k, write in enumerate((spans.groups(spans.ALWAYS), spans.SWITCH))
+    ]
+    assert found[0] != found[1]
 
 
 def test_the_checks_can_fail(tmp_path: Path) -> None:
@@ -125,7 +142,7 @@ def test_results_have_a_short_repr(tmp_path: Path) -> None:
     checked = repr(miner.check(folder.path / "study.toml", n_workers=1))
     hunted = repr(miner.hunt(folder.path / "study.toml", n_workers=1))
     assert checked.startswith("Check('study', 2021-01-01 to 2021-05-30: 12 entities, 3 alert types")
-    assert hunted.startswith("Hunt('study': 6 candidates, 1 rules, 1 confirmed, folder None")
+    assert hunted.startswith("Hunt('study': 6 candidates, 1 rule, 1 confirmed, folder None")
     assert max(len(checked), len(hunted)) < 200
 
 

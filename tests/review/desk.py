@@ -1,4 +1,4 @@
-"""A small desk: four quarters of alerts and events as plain sets, a rule book, and the reviews of it.
+"""A small desk: four quarters of alerts and events as plain sets, a rule book, and its reviews.
 
 Names of types and companies are letters; the world is the twin's (`naive.World`), so that every
 count can be made again by brute force.

@@ -88,9 +88,7 @@ def test_triggers_outcomes_and_rates_are_the_twins(reviewed):
     for one, combination in zip(result.rules, COMBINATIONS, strict=False):
         for quarter in QUARTERS:
             twin = closed_in(world, combination, quarter)
-            mine = {
-                (t.entity, session(t.session)): t for t in one.triggers if t.quarter == quarter
-            }
+            mine = {(t.entity, session(t.session)): t for t in one.triggers if t.quarter == quarter}
             assert set(mine) == {(e, t) for e, t, *_ in twin}
             for e, t, hit, rate, peer in twin:
                 trigger = mine[e, t]
