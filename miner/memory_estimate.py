@@ -32,7 +32,7 @@ JUDGED_TRIGGER = 9  # its rate, and whether it is a hit
 PLACEBO_TRIGGER = 9
 LATER_TRIGGER = 32  # the whole calendar's triggers for the walk-forward
 DRAWN = 4 * 5.2  # hits and log p of a draw, joined and sorted
-EXCHANGED = 4 * (266 + 256)  # random numbers and sessions of an event in a block of draws
+EXCHANGED = 4 * (522 + 512)  # random numbers and sessions of an event in a block of draws
 
 CELLS = "cells (entities x sessions)"
 ROWS = "rows"

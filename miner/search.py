@@ -122,7 +122,8 @@ def search(
     ----------
     families : of the segment, if they are at hand already
     in_full : draw exchanged worlds, so that westfall-young can be shown beside the chosen
-        adjustment (always done where it is the chosen one), and count proposals outside the family
+        adjustment (always done where it is the chosen one), count proposals outside the family, and
+        work out every p-value, not only those that may pass
     """
     mining, testing = study.mining, study.testing
     cases = cases_of(segment, targets, study, families, n_workers)
@@ -137,6 +138,7 @@ def search(
             min_hits=mining.min_hits,
             max_size=mining.max_size,
             by_mining=in_full,
+            level=None if in_full else _level(study),
             n_workers=n_workers,
         )
         for case in cases
@@ -155,6 +157,12 @@ def search(
         for i, (f, drawn) in enumerate(zip(found, draws, strict=False))
     )
     return Search(tuple(found), adjuster, explanation, leans)
+
+
+def _level(study: Study) -> float | None:
+    """The level above which a p-value need not be worked out: it cannot pass, and is not shown."""
+    # drawn adjusted p-values may lie a little below the closed form's, so no short cut there
+    return None if study.testing.adjust == "westfall-young" else study.testing.fdr
 
 
 def _need_of(cases: Sequence[Case], n_draws: int, n_workers: int) -> memory_estimate.Need:
@@ -193,7 +201,7 @@ def placebo_rules(
                 max_size=mining.max_size,
                 start=f.margins,
                 by_mining=False,
-                level=None if real.adjuster.adjust == "westfall-young" else study.testing.fdr,
+                level=_level(study),
             )
             for i, f in enumerate(real.found)
         ]

@@ -711,7 +711,7 @@ def test_hits_over_all_exchanges_follow_hoeffding_1951():
     assert chain.var() == pytest.approx(5.6875, rel=0.1)
 
 
-@given(seeds, st.integers(1, 256), st.sampled_from([5, 64, 130]))
+@given(seeds, st.integers(1, 512), st.sampled_from([5, 64, 130]))
 def test_hits_of_many_draws_are_counted_one_by_one(seed, n_draws, n_sessions):
     rng = np.random.default_rng(seed)
     n_entities, horizon = 5, int(rng.integers(1, 5))

@@ -43,11 +43,9 @@ def _wait(heard: int) -> None:
     number = 0
     while number not in ours:
         number = os.read(heard, 1)[0]
-    placing.abandon(PATIENCE)
-    line = f"stopped by {signal.Signals(number).name}; nothing unfinished is left\n"
-    if os.isatty(2):
-        line = SHOW_CURSOR + line
     try:
-        os.write(2, line.encode())
-    finally:
+        placing.abandon(PATIENCE)
+        line = f"stopped by {signal.Signals(number).name}; nothing unfinished is left\n"
+        os.write(2, ((SHOW_CURSOR if os.isatty(2) else "") + line).encode())
+    finally:  # whatever goes wrong: the main thread waits for this
         os._exit(128 + number)

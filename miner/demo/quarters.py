@@ -40,7 +40,8 @@ def play_quarters(
 ) -> Year:
     """Adopt the rules of the hunt in ``folder/run``, and review them quarter by quarter.
 
-    Every review's proposals are accepted; the last one also hunts the window that ends with it.
+    Tables, book, ledger and reviews are in ``folder/later``. Every review's proposals are
+    accepted; the last one also hunts the window that ends with it.
 
     Raises
     ------
@@ -49,7 +50,8 @@ def play_quarters(
     """
     progress("inventing four more quarters")
     truth = write_later(folder, seed)
-    book, ledger = folder / BOOK, folder / LEDGER
+    home = truth.study.parent
+    book, ledger = home / BOOK, home / LEDGER
     for earlier in (book, ledger, ledger.with_name(f"{LEDGER}-journal")):
         earlier.unlink(missing_ok=True)
     run = folder / "run"
@@ -58,7 +60,7 @@ def play_quarters(
         record_new(opened, items_of_run(run, book), who=WHO, why="adopted after the hunt")
     reviews = [
         review(
-            book, truth.study, quarter, ledger, folder / f"review-{quarter}",
+            book, truth.study, quarter, ledger, home / f"review-{quarter}",
             accept=True, who=WHO, with_hunt=quarter == QUARTERS[-1], replace_output=True,
             n_workers=n_workers, progress=progress,
         )
@@ -70,7 +72,7 @@ def play_quarters(
 def year_lines(year: Year) -> Iterator[str]:
     """What became of the planted rules beside what the reviews proposed."""
     yield textwrap.fill(
-        "Four quarters later (later/study.toml): a review of the rule book at the end of each, "
+        "Four quarters later (folder later): a review of the rule book at the end of each, "
         "proposals accepted.",
         WIDTH,
     )

@@ -7,7 +7,7 @@ import numpy as np
 from miner.kernels.bits import ONE
 from miner.kernels.compiling import kernel
 
-LANES = 4  # words of draws side by side: one vector register
+LANES = 8  # words of draws side by side: the widest vector register
 CELLS_A_BLOCK = 100_000  # cells whose words are kept at hand
 
 
@@ -102,16 +102,17 @@ def exchange(session_v, entity_v, pool_v, pool_start, pool_member, slot_et, rand
 
 @kernel
 def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_sessions, n_planes):
-    """Hits of every combination in up to 256 draws at once.
+    """Hits of every combination in up to 512 draws at once.
 
-    Four words a cell hold, bit by bit, in which draws the cell is in an event window. Adding
-    words to bit-sliced counters (plane p holds bit p of every count) adds 256 trials in a few
-    operations; seven cells at a time go through full adders without a branch (the carry-save
-    adder tree of Harley and Seal, as in Warren, "Hacker's Delight", sec. 5-1).
+    Eight words a cell hold, bit by bit, in which draws the cell is in an event window. Adding
+    words to bit-sliced counters (plane p holds bit p of every count) adds 512 trials in a few
+    operations; seven cells at a time (an empty one in place of what is missing) go through full
+    adders without a branch (the carry-save adder tree of Harley and Seal, as in Warren, "Hacker's
+    Delight", sec. 5-1).
 
     Parameters
     ----------
-    session_rv : int32 [draws <= 256, events], events sorted by entity (``first_event_e``)
+    session_rv : int32 [draws <= 512, events], events sorted by entity (``first_event_e``)
     offset_c, entity, session : combination-major triggers, sorted by entity
     n_planes : int, at least the bits of the largest trigger count, and 4
 
@@ -123,7 +124,8 @@ def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_
     plane_cpl = np.zeros((n_combos, n_planes, LANES), dtype=np.uint64)
     next_c = offset_c[:-1].copy()
     n_block = max(1, min(n_entities, CELLS_A_BLOCK // n_sessions))
-    word_il = np.zeros((n_block * n_sessions, LANES), dtype=np.uint64)
+    nothing = n_block * n_sessions
+    word_il = np.zeros((nothing + 1, LANES), dtype=np.uint64)
     word_k = np.zeros(LANES, dtype=np.uint64)
     for first in range(0, n_entities, n_block):
         last = min(n_entities, first + n_block)
@@ -146,14 +148,26 @@ def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_
             next_c[c] = stop
             if not has_events:
                 continue
-            while stop - j >= 7:
+            while j < stop:
                 i0 = (entity[j] - first) * n_sessions + session[j]
-                i1 = (entity[j + 1] - first) * n_sessions + session[j + 1]
-                i2 = (entity[j + 2] - first) * n_sessions + session[j + 2]
-                i3 = (entity[j + 3] - first) * n_sessions + session[j + 3]
-                i4 = (entity[j + 4] - first) * n_sessions + session[j + 4]
-                i5 = (entity[j + 5] - first) * n_sessions + session[j + 5]
-                i6 = (entity[j + 6] - first) * n_sessions + session[j + 6]
+                i1 = nothing
+                if j + 1 < stop:
+                    i1 = (entity[j + 1] - first) * n_sessions + session[j + 1]
+                i2 = nothing
+                if j + 2 < stop:
+                    i2 = (entity[j + 2] - first) * n_sessions + session[j + 2]
+                i3 = nothing
+                if j + 3 < stop:
+                    i3 = (entity[j + 3] - first) * n_sessions + session[j + 3]
+                i4 = nothing
+                if j + 4 < stop:
+                    i4 = (entity[j + 4] - first) * n_sessions + session[j + 4]
+                i5 = nothing
+                if j + 5 < stop:
+                    i5 = (entity[j + 5] - first) * n_sessions + session[j + 5]
+                i6 = nothing
+                if j + 6 < stop:
+                    i6 = (entity[j + 6] - first) * n_sessions + session[j + 6]
                 left_over = np.uint64(0)
                 for w in range(LANES):
                     a = word_il[i0, w] ^ word_il[i1, w]
@@ -186,11 +200,6 @@ def count_hits(session_rv, first_event_e, offset_c, entity, session, horizon, n_
                     for w in range(LANES):
                         carry_into(plane_cpl[c], 4, w, word_k[w])
                 j += 7
-            while j < stop:
-                i0 = (entity[j] - first) * n_sessions + session[j]
-                for w in range(LANES):
-                    carry_into(plane_cpl[c], 0, w, word_il[i0, w])
-                j += 1
     hits_cr = np.zeros((n_combos, LANES * 64), dtype=np.int32)
     for c in range(n_combos):
         for p in range(n_planes):

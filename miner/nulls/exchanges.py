@@ -16,7 +16,7 @@ from miner.seeds import stream
 from miner.units import Case
 from miner.workers import Progress, silent
 
-DRAWS_A_BLOCK = 256
+DRAWS_A_BLOCK = 512
 BURN_IN = 10
 
 
@@ -25,7 +25,7 @@ class Exchanger:
     """Worlds of a case in which every entity keeps its number of events and every peer group its
     number on each session.
 
-    Swap randomisation (Gionis, Mannila, Mielikainen & Tsaparas 2007). Each block of 256 draws is a
+    Swap randomisation (Gionis, Mannila, Mielikainen & Tsaparas 2007). Each block of 512 draws is a
     chain of its own, seeded by its number, that starts from the observed world, is run ``BURN_IN``
     sweeps and then kept once a sweep; a sweep lets every event propose one exchange.
     """

@@ -199,7 +199,10 @@ class _Odds:
             return True
         for _ in range(most_sweeps):
             self.n_sweeps += 1
-            misses = workers.in_order(self._sweep_rows, range(len(self.parts)), self.n_workers)
+            if len(self.parts) == 1:  # no threads for what takes no time
+                misses = [self._sweep_rows(0)]
+            else:
+                misses = workers.in_order(self._sweep_rows, range(len(self.parts)), self.n_workers)
             sum_gt = np.add.reduce([part[0] for part in self.sums])
             var_gt = np.add.reduce([part[1] for part in self.sums])
             gap_gt = np.where(self.is_col, sum_gt - self.target_gt, 0.0)

@@ -70,7 +70,7 @@ def interval_plot(rule: Row, high: float) -> Markup:
 def interval_axis(high: float) -> Markup:
     """The scale of the interval plots."""
     plot = Plot((0, high), (0, 1), width=170, height=16, margin=(0, 4, 0, 4))
-    for x, words in share_ticks(high)[:: 1 if high < 0.9 else 2]:
+    for x, words in share_ticks(high):
         plot.text(plot.px(x), 12, words, "start" if x == 0 else "middle")
     return plot.done(f"Scale from 0 to {percent(high)}", "chart interval")
 
