@@ -162,7 +162,7 @@ class ReviewSettings(Section):
     """
 
     alpha: Share = 0.05
-    keep_share: Annotated[float, number(0, is_above=True, high=1)] = 0.9
+    keep_share: Annotated[float, number(0, is_above=True, high=1)] = 1.0
     watch_at: Annotated[float, number(1, is_above=True)] = 5.0
     min_triggers: Annotated[int, whole(1)] = 10
     restart_quarters: Annotated[int, whole(0)] = 4
