@@ -200,8 +200,8 @@ def lean_p(found: Found, drawn: Drawn, rule_rows: Sequence[int], n_workers: int 
     observed = np.median((found.hits[some] - mean[some]) / spread[some])
 
     def middle(block: tuple[int, int]) -> np.ndarray:
-        gap_cr = drawn.hits_cr[some, slice(*block)] - mean[some, None]
-        return np.median(gap_cr / spread[some, None], axis=0)
+        hits_rc = np.ascontiguousarray(drawn.hits_cr[some, slice(*block)].T)
+        return np.median((hits_rc - mean[some]) / spread[some], axis=1)
 
     blocks = workers.blocks(drawn.hits_cr.shape[1], DRAWS_A_BLOCK)
     middle_r = np.concatenate(workers.in_order(middle, blocks, n_workers))

@@ -22,7 +22,7 @@ from miner.open_cells import OpenCells
 from miner.panel import Panel
 from miner.triggers import TriggerTable
 
-MOST_ARRIVALS = 100_000
+MOST_ARRIVALS = 20_000
 
 
 @dataclass(frozen=True)
@@ -59,18 +59,23 @@ def together(panel: Panel, singles: TriggerTable, lookback: int, n_workers: int 
     """Co-occurrence of all types.
 
     ``singles`` holds the triggers of each type alone, in order of type, wherever its own type is
-    covered. Of a type with more than 100,000 every so many-th is looked at.
+    covered. Of a type with more than 20,000 every so many-th is looked at.
     """
     n_types = len(panel.type_names)
     singles = _thinned(singles)
 
+    open_eqw = panel.cover_eqw.copy()
+    open_eqw[:, :, : (lookback - 1) >> 6] = 0
+    open_eqw[:, :, (lookback - 1) >> 6] &= bits.ALL << np.uint64((lookback - 1) & 63)
+    cells_of: dict[int, OpenCells] = {}  # types covered alike share theirs
+
     def column(k: int) -> tuple[np.ndarray, ...]:
-        open_ew = panel.cover_eqw[:, panel.class_k[k]].copy()
-        open_ew[:, : (lookback - 1) >> 6] = 0
-        open_ew[:, (lookback - 1) >> 6] &= bits.ALL << np.uint64((lookback - 1) & 63)
+        q = int(panel.class_k[k])
+        open_ew = np.ascontiguousarray(open_eqw[:, q])
+        if q not in cells_of:
+            cells_of[q] = OpenCells(bits.unpack(open_ew, panel.n_sessions), panel.peers)
         on_ew = _kept_on(np.ascontiguousarray(panel.alert_ekw[:, k]), lookback)
-        cells = OpenCells(bits.unpack(open_ew, panel.n_sessions), panel.peers)
-        margins = fit(cells, on_ew, law=panel.law)
+        margins = fit(cells_of[q], on_ew, law=panel.law)
         is_asked = hit_kernels.look_up(singles.entity, singles.session, open_ew)
         return tally(singles, margins, on_ew, is_asked)
 

@@ -62,6 +62,7 @@ class OwnTimingNull:
         life_e = np.searchsorted(entity, np.arange(n_entities + 1)).astype(np.int64)
         window_entity, window_t = np.nonzero(is_window_et)
         window_e = np.searchsorted(window_entity, np.arange(n_entities + 1)).astype(np.int64)
+        circles = kernels.rings(life_e, start_t, stop_t, window_e, window_t.astype(np.int32))
 
         def judge(block: tuple[int, int]) -> np.ndarray:
             part = slice(*block)
@@ -74,9 +75,8 @@ class OwnTimingNull:
                 life_e,
                 start_t,
                 stop_t,
-                window_e,
-                window_t.astype(np.int32),
-                n_sessions,
+                np.diff(window_e),
+                *circles,
             )
 
         blocks = workers.blocks(rows.size, ROWS_A_BLOCK)

@@ -137,8 +137,8 @@ def _said(
 def _least(rule: BookRule, promise: float) -> float:
     """The precision to hold a rule to: its promise, less where hardly a trigger missed.
 
-    No more than (hits + 1) / (triggers + 2) of its holdout (Laplace's rule of succession): a promise
-    of 100 % from twenty triggers should not be broken by the first miss.
+    No more than (hits + 1) / (triggers + 2) of its holdout (Laplace's rule of succession): a
+    promise of 100 % from twenty triggers should not be broken by the first miss.
     """
     if rule.holdout is None:
         return promise
