@@ -55,6 +55,7 @@ def test_the_check_sees_a_level_that_is_broken(name: str) -> None:
     assert _is_broken(_shares(name, range(1000, 1008)))
 
 
+@pytest.mark.slow
 def test_hunts_with_nothing_to_find_seldom_find_a_rule() -> None:
     found = 0
     names = ("quiet", "sectors", "calendar, busy", "all held")

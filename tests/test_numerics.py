@@ -111,18 +111,16 @@ def test_own_timing_of_a_certain_chain_is_a_bound():
     """400 entities, each with two triggers that both hit on one of 3,000 shifts."""
     n, length = 400, 3_000
     triggers = np.tile([10, 900], n).astype(np.int32)
+    lives = np.arange(n + 1), np.zeros(n, dtype=np.int32), np.full(n, length, dtype=np.int32)
     p = shifts.shift_p_values(
         np.zeros(1, dtype=np.int64),
         np.array([0, 2 * n]),
         np.repeat(np.arange(n), 2).astype(np.int32),
         triggers,
         np.array([2 * n]),
-        np.arange(n + 1),
-        np.zeros(n, dtype=np.int32),
-        np.full(n, length, dtype=np.int32),
-        2 * np.arange(n + 1),
-        triggers,
-        length,
+        *lives,
+        np.full(n, 2),
+        *shifts.rings(*lives, 2 * np.arange(n + 1), triggers),
     )
     assert p[0] == TINY
 
@@ -295,18 +293,16 @@ def test_triggers_beyond_2_31_are_tallied_and_tested():
 
 def test_own_timing_beyond_2_31():
     one = np.zeros(1, dtype=np.int32)
+    lives = np.array([0, 1]), one, one + 10
     p = shifts.shift_p_values(
         np.array([1]),
         np.array([0, BEYOND, BEYOND + 1]),
         repeated(0, np.int32),
         repeated(5, np.int32),
         np.array([1]),
-        np.array([0, 1]),
-        one,
-        one + 10,
-        np.array([0, 1]),
-        one + 5,
-        10,
+        *lives,
+        np.array([1]),
+        *shifts.rings(*lives, np.array([0, 1]), one + 5),
     )
     assert p[0] == pytest.approx(0.1)
 

@@ -31,6 +31,7 @@ def rules_of(rows: list[dict[str, Any]]) -> list[dict[str, Any]]:
     return sorted((r for r in rows if r["rule_order"] is not None), key=lambda r: r["rule_order"])
 
 
+@pytest.mark.slow
 def test_the_worlds_exercise_every_part():
     verdicts: Counter[str] = Counter()
     worlds: Counter[str] = Counter()

@@ -44,6 +44,7 @@ def test_a_hard_input(case: Case, tmp_path: Path) -> None:
     run_case(case, tmp_path.resolve())
 
 
+@pytest.mark.slow
 @of_cases([case for case in CASES if case.key in IN_A_PROCESS_OF_ITS_OWN])
 def test_a_hard_input_in_a_process_of_its_own(case: Case, tmp_path: Path) -> None:
     run_case(case, tmp_path.resolve(), in_subprocess)

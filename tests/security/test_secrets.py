@@ -61,6 +61,7 @@ def test_a_url_that_works_is_nowhere_in_what_is_written_or_said(tmp_path: Path):
     assert SECRET not in done.stdout + done.stderr
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "url",
     [
@@ -90,6 +91,7 @@ def test_a_url_that_fails_is_told_without_its_password(url, tmp_path: Path):
     assert not (tmp_path / "run").exists()
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(
     "query",
     [
