@@ -113,7 +113,7 @@ def _hypothesis(body: dict[str, Any]) -> str:
 
 
 def _review(body: dict[str, Any]) -> str:
-    reasons = " ".join(body["reasons"])
+    reasons = "; ".join(body["reasons"])
     counts = f"{body['hits']} of {body['triggers']} hit, {body['expected_hits']:.1f} expected"
     return f"proposes {body['proposed']} ({counts})" + (f": {reasons}" if reasons else "")
 

@@ -54,12 +54,13 @@ def list_entries(
 @click.argument("ledger")
 @click.argument("rule")
 def show_rule(ledger: str, rule: str) -> None:
-    """Show the life of RULE (its id) in LEDGER."""
+    """Show the life of RULE (its id, or what only its id begins with) in LEDGER."""
     from miner.ledger import open_ledger
     from miner.ledger_words import life_lines
 
     with open_ledger(ledger, read_only=True) as opened:
-        show(life_lines(rule, opened.life(rule, must_be_known=True)))
+        life = opened.life(rule, must_be_known=True)
+        show(life_lines(life[0].rule or rule, life))
 
 
 @ledger.command()

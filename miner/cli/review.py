@@ -19,6 +19,7 @@ from miner.cli.shared import show, shown_progress, workers_option
 @click.option("--replace", is_flag=True, help="Replace the folder of an earlier review.")
 @click.option("--accept", is_flag=True,
               help="Carry the proposals out, in the ledger and the book's statuses.")  # fmt: skip
+@click.option("--dry-run", is_flag=True, help="Only look: enter nothing in the ledger.")
 @click.option("--no-hunt", is_flag=True, help="Do not hunt the window that ends with the quarter.")
 @click.option("--who", default=None, help="Who reviews.  [default: the login name]")
 @click.option("--why", default="quarterly review", show_default=True, help="The reason entered.")
@@ -31,6 +32,7 @@ def review(
     output: Path | None,
     replace: bool,
     accept: bool,
+    dry_run: bool,
     no_hunt: bool,
     who: str | None,
     why: str,
@@ -49,6 +51,7 @@ def review(
             ledger,
             folder,
             accept=accept,
+            dry_run=dry_run,
             who=who,
             why=why,
             with_hunt=not no_hunt,

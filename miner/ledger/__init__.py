@@ -5,7 +5,7 @@ and comes out, ``kinds`` what each kind of entry must say, ``chain`` what its ha
 """
 
 from .kinds import KINDS
-from .ledger import Ledger, Turn, login_name, open_ledger
+from .ledger import Ledger, Turn, has_ledger, login_name, open_ledger
 from .records import Broken, Entry, Item, Verified
 
 __all__ = [
@@ -16,6 +16,7 @@ __all__ = [
     "Ledger",
     "Turn",
     "Verified",
+    "has_ledger",
     "login_name",
     "open_ledger",
 ]

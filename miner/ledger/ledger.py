@@ -28,6 +28,8 @@ from .rows import (
     rule_names,
 )
 
+BEFORE_ALL = -(2**62)  # a number that no entry has, not even one that somebody forged
+
 
 def open_ledger(
     where: str | Path, *, create: bool = True, read_only: bool = False, wait_seconds: float = 60.0
@@ -49,8 +51,7 @@ def open_ledger(
     place = Place(where, wait_seconds=wait_seconds)
     version = _version(place)
     if version == 0 and (read_only or not create):
-        rule, found = "be there", "nothing"
-        raise LedgerError(explain(place.label, "ledger", rule, found, "Check where it is."))
+        raise LedgerError(explain(place.label, "ledger", *_nothing_in(place)))
     if version < schema.NEWEST and not read_only:
         with place.appending(create=create) as connection:
             version = _known(schema.version_of(connection), place)  # others may have been here
@@ -59,6 +60,29 @@ def open_ledger(
                 raise LedgerError(explain(place.label, "ledger", rule, found, "Name another file."))
             schema.migrate(connection, version, schema.NEWEST, _now())
     return Ledger(place, read_only=read_only)
+
+
+def has_ledger(where: str | Path) -> bool:
+    """Whether there is a ledger already.
+
+    Raises
+    ------
+    LedgerError : what is there cannot be read
+    """
+    place = Place(where, wait_seconds=60.0)
+    try:
+        return _version(place) > 0
+    finally:
+        place.close()
+
+
+def _nothing_in(place: Place) -> tuple[str, str, str]:
+    if place.file is None or not place.file.exists():
+        return "be there", "nothing", "Check where it is."
+    if place.file.stat().st_size == 0:
+        advice = "Nothing was ever entered in it; check the path."
+        return "hold a ledger", "an empty file", advice
+    return "hold a ledger", "a database without one", "Check the path."
 
 
 def _version(place: Place) -> int:
@@ -109,6 +133,16 @@ class Turn:
         last = last_number(self._connection)
         while rows := page_of(self._connection, wanted, after, last):
             yield from (as_entry(row, self._label) for row in rows)
+            after = rows[-1].number
+
+    def verify(self) -> Verified:
+        """Check every entry there is and the chain of hashes. See ``Ledger.verify``."""
+        return chain.verify(self._stored())
+
+    def _stored(self) -> Iterator[chain.Stored]:
+        last, after = last_number(self._connection), BEFORE_ALL
+        while rows := page_of(self._connection, [], after, last):
+            yield from (as_stored(row) for row in rows)
             after = rows[-1].number
 
 
@@ -192,6 +226,8 @@ class Ledger:
     def life(self, rule: str, *, must_be_known: bool = False) -> tuple[Entry, ...]:
         """Everything about one rule, oldest first.
 
+        Where it ``must_be_known``, the beginning of its id is enough if no other begins so.
+
         Raises
         ------
         LedgerError : there is nothing about it although ``must_be_known``
@@ -199,7 +235,11 @@ class Ledger:
         found = tuple(self.entries(rule=rule))
         if not found and must_be_known:
             with self._place.reading() as connection:
-                advice = nearest(rule, rule_names(connection))
+                names = rule_names(connection)
+            begun = [name for name in names if rule and name.startswith(rule)]
+            if len(begun) == 1:
+                return self.life(begun[0])
+            advice = f"Several begin so: {', '.join(begun[:5])}." if begun else nearest(rule, names)
             told = explain(self.label, "rule", "be one the ledger knows", f'"{rule}"', advice)
             raise LedgerError(told)
         return found
@@ -218,7 +258,7 @@ class Ledger:
         ----------
         known : a hash noted earlier. It has to be that of an entry: a removed tail shows only so
         """
-        rows = (row for page in self._pages([], -(2**62)) for row in page)
+        rows = (row for page in self._pages([], BEFORE_ALL) for row in page)
         return chain.verify((as_stored(row) for row in rows), known)
 
     def close(self) -> None:

@@ -78,7 +78,7 @@ class Place:
             file = self.file
             self.engine = self._postgresql(url) if file is None else self._sqlite(file)
         except ImportError:
-            advice = "Install it: pip install 'combination-signal-miner[postgresql]'."
+            advice = "Install it: .venv/bin/pip install '.[postgresql]' where this program lies."
             rule, found = "have its driver installed (psycopg)", "no such package"
             raise LedgerError(explain(self.label, "ledger", rule, found, advice)) from None
 

@@ -93,6 +93,10 @@ def page(review: Row) -> str:
             for status in said.URGENCY
         ],
         marked=[rule for rule in rules if rule["row"]["marks"]],
+        carried_out=any(
+            rule["status_after"] != rule["status_before"] and not rule.get("settled")
+            for rule in review["rules"]
+        ),
         book_status=said.BOOK_STATUS,
         retire_at=retire_at,
         hanging=said.HANGING.get(review["hang_together"], review["hang_together"]),

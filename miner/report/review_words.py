@@ -23,7 +23,9 @@ def evidence_text(e: float | None) -> str:
     """Evidence with no more digits than it deserves."""
     if e is None:
         return NOTHING
-    if e >= 1e4 or 0 < e < 1e-3:
+    if e >= 1000:
+        return "over 1,000"
+    if 0 < e < 1e-3:
         mantissa, power = f"{e:.0e}".split("e")
         return f"{mantissa}e{int(power)}"
     return f"{e:.0f}" if e >= 10 else f"{e:.2g}"

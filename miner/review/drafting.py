@@ -28,6 +28,11 @@ from miner.review.records import Evidence, RuleReview, Trigger
 from miner.rule_book import BookRule
 from miner.sequential.ebh import e_bh, e_bh_adjusted
 
+ALONE = (
+    "would not stand once all rules of the book are looked at at once (e-BH): one of many may get "
+    "so far by bad luck"
+)
+
 
 @dataclass(frozen=True)
 class Draft:
@@ -230,6 +235,15 @@ def in_book(
             if evidence is not None:
                 found[rule] = replace(evidence, in_book=bool(is_in), least_alpha=float(level))
     return [
-        replace(one, works=works.get(one.id, one.works), broken=broken.get(one.id, one.broken))
+        _told_alone(
+            replace(one, works=works.get(one.id, one.works), broken=broken.get(one.id, one.broken))
+        )
         for one in reviews
     ]
+
+
+def _told_alone(one: RuleReview) -> RuleReview:
+    """With a reason more where a retirement is the single rule's, not the whole book's."""
+    if one.status != "retire" or one.broken is None or one.broken.in_book:
+        return one
+    return replace(one, reasons=(*one.reasons, ALONE))

@@ -8,22 +8,26 @@ from importlib.metadata import version
 from pathlib import Path
 
 from miner.assemble import assemble
-from miner.ledger import Item, Turn, login_name, open_ledger
+from miner.errors import SettingsError, explain
+from miner.ledger import Item, Turn, has_ledger, login_name, open_ledger
 from miner.ledger.kinds import check_text
 from miner.ledger.making import hunt_item
 from miner.review import folder as review_folder
 from miner.review.drafting import draft_of, in_book
 from miner.review.entries import decided, reviewed
-from miner.review.history import KINDS, read_history
+from miner.review.fitting import check_fits
+from miner.review.history import KINDS, History, quarter_name, read_history
 from miner.review.looking import Seen, look
 from miner.review.new_rules import put_to_test
-from miner.review.proposals import BOOK_STATUS
 from miner.review.quarters import quarter_to_review
 from miner.review.records import ListedRule, Review, RuleReview, Trigger, Workload
 from miner.review.remarks import remarks
+from miner.review.settling import settled
 from miner.rule_book import read_rule_book, write_rule_book
 from miner.settings import Study, load_study, redact_url
 from miner.workers import Progress, n_default, silent
+
+BEFORE = ("rule", "hypothesis", "decision")  # what looking needs to know
 
 
 def review(
@@ -34,6 +38,7 @@ def review(
     output: str | Path | None = None,
     *,
     accept: bool = False,
+    dry_run: bool = False,
     who: str | None = None,
     why: str = "quarterly review",
     with_hunt: bool = True,
@@ -54,13 +59,18 @@ def review(
     ledger : path of a SQLite file or a database URL; made if it is not there
     output : folder to write; it appears whole or not at all. None writes nothing
     accept : carry the proposals out: into the ledger and into the book's statuses
+    dry_run : enter nothing in the ledger, which need not be there
     who, why : who does this, by default the login name, and the reason
     with_hunt : hunt the window that ends with the quarter, too
 
     Raises
     ------
-    InputError : the settings, a table, the book or the ledger cannot be used
+    InputError : the settings, a table, the book or the ledger cannot be used, or an entry of the
+        ledger is not as it was written
     """
+    if accept and dry_run:
+        rule, found = "be either accepted or a dry run", "both"
+        raise SettingsError(explain("review", "proposals", rule, found))
     book_path = Path(book)
     if output is not None:
         review_folder.check_free(Path(output), replace_output)
@@ -73,15 +83,39 @@ def review(
     check_text(desk.why, "review", "why")
     inputs = assemble(study, progress)
     chosen = quarter_to_review(quarter, study, inputs.calendar)
-    with open_ledger(ledger) as opened:
-        seen = look(inputs, rule_book, chosen, opened, with_hunt, n_workers, progress)
-        progress("weighing")
-        with opened.exclusive() as turn:
-            result = conclude(seen, turn, desk, accept)
+    check_fits(inputs.panel, rule_book, inputs.study.name)
+    if dry_run:
+        history = past(ledger, chosen.name)
+        seen = look(inputs, rule_book, chosen, history, with_hunt, n_workers, progress)
+        result = replace(
+            conclude(seen, history, desk, accept=False)[0], unrecorded="a dry run: nothing recorded"
+        )
+    else:
+        with open_ledger(ledger) as opened:
+            known = read_history(opened.entries(kinds=BEFORE), chosen.name)
+            seen = look(inputs, rule_book, chosen, known, with_hunt, n_workers, progress)
+            progress("weighing")
+            with opened.exclusive() as turn:
+                turn.verify().raise_if_broken(opened.label)
+                result = recorded(seen, turn, desk, accept)
     if output is not None:
         progress("writing")
         review_folder.write(result, Path(output), replace_output)
     return result
+
+
+def past(ledger: str | Path, quarter: str) -> History:
+    """What a ledger says, none yet included.
+
+    Raises
+    ------
+    LedgerError : an entry is not as it was written
+    """
+    if not has_ledger(ledger):
+        return History()
+    with open_ledger(ledger, read_only=True) as opened:
+        opened.verify().raise_if_broken(opened.label)
+        return read_history(opened.entries(kinds=KINDS), quarter)
 
 
 @dataclass(frozen=True)
@@ -94,11 +128,29 @@ class Desk:
     why: str
 
 
-def conclude(seen: Seen, turn: Turn, desk: Desk, accept: bool) -> Review:
+def recorded(seen: Seen, turn: Turn, desk: Desk, accept: bool) -> Review:
     """Weigh and propose with the ledger held, and record it; with ``accept``, carry it out."""
+    history = read_history(turn.entries(kinds=KINDS), seen.quarter.name)
+    result, items = conclude(seen, history, desk, accept)
+    entries = turn.append(items, who=desk.who, why=desk.why) if items else ()
+    if accept:
+        set_statuses(
+            desk.book,
+            {
+                one.id: (one.status_before, one.status_after)
+                for one in result.rules
+                if one.status_after != one.status_before and not one.settled
+            },
+        )
+    return replace(result, entries=(entries[0].number, entries[-1].number) if entries else None)
+
+
+def conclude(
+    seen: Seen, history: History, desk: Desk, accept: bool
+) -> tuple[Review, Sequence[Item]]:
+    """The review with what it would enter in the ledger."""
     settings = seen.inputs.study.review
     quarter = seen.quarter.name
-    history = read_history(turn.entries(kinds=KINDS), quarter)
     items: list[Item] = []
     drafts = []
     for rule, computed in zip(seen.rules, seen.closed, strict=True):
@@ -106,11 +158,12 @@ def conclude(seen: Seen, turn: Turn, desk: Desk, accept: bool) -> Review:
         drafts.append(draft)
         items += new
     reviews = in_book([draft.review for draft in drafts], drafts, settings.alpha)
-    if accept:
-        reviews = [
-            replace(one, status_after=BOOK_STATUS.get(one.status, one.status_before))
-            for one in reviews
-        ]
+    now = {rule.id: rule.status for rule in read_rule_book(desk.book).rule}
+    reviews = [
+        settled(one, history.of(one.id), quarter, seen.status_now[one.id],
+                now.get(one.id, seen.status_now[one.id]), accept)
+        for one in reviews
+    ]  # fmt: skip
     for one, draft in zip(reviews, drafts, strict=True):
         items += reviewed(one, draft.marks_now, quarter, history.of(one.id))
     hunt = None
@@ -121,12 +174,12 @@ def conclude(seen: Seen, turn: Turn, desk: Desk, accept: bool) -> Review:
         items += tests
     for one in reviews:
         items += decided(one, quarter)
-    entries = turn.append(items, who=desk.who, why=desk.why) if items else ()
-    if accept:
-        changed = [one for one in reviews if one.status_after != one.status_before]
-        set_statuses(desk.book, {o.id: (o.status_before, o.status_after) for o in changed})
+    unrecorded = ""
+    if seen.first_adopted is not None and quarter_name(seen.first_adopted) > quarter:
+        unrecorded = f"no rule of the book was adopted yet (first: {seen.first_adopted})"
+        items = []
     dates = seen.inputs.calendar.dates
-    return Review(
+    result = Review(
         study=seen.inputs.study.name,
         book=desk.book.name,
         ledger=redact_url(desk.ledger),
@@ -155,10 +208,12 @@ def conclude(seen: Seen, turn: Turn, desk: Desk, accept: bool) -> Review:
         workload=tuple(workload(reviews)),
         hunt=hunt,
         inputs=seen.moved,
-        warnings=tuple(remarks(seen, history, drafts)),
-        entries=(entries[0].number, entries[-1].number) if entries else None,
+        warnings=tuple(remarks(seen, history, drafts, reviews, accept)),
+        entries=None,
         is_accepted=accept,
+        unrecorded=unrecorded,
     )
+    return result, items
 
 
 def set_statuses(path: Path, changes: Mapping[str, tuple[str, str]]) -> None:

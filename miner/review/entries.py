@@ -50,7 +50,7 @@ def reviewed(
 
 def decided(one: RuleReview, quarter: str) -> Iterator[Item]:
     """The new status of a rule, where it has one."""
-    if one.status_after != one.status_before:
+    if one.status_after != one.status_before and not one.settled:
         body = {"before": one.status_before, "after": one.status_after, "proposed": one.status}
         yield Item("decision", one.id, quarter, body)
 

@@ -23,9 +23,20 @@ SAME_RATE = 0.01
 PLACES = 10  # decimals kept of a rate
 
 
+@dataclass(frozen=True)
+class Decision:
+    """A status that a quarter's accepted review gave a rule; ``date`` is when it was entered."""
+
+    quarter: str
+    before: str
+    after: str
+    who: str
+    date: str
+
+
 @dataclass
 class RuleHistory:
-    """What the ledger says of one rule, up to a quarter.
+    """What the ledger says of one rule, up to a quarter; decisions of all quarters.
 
     Attributes
     ----------
@@ -35,6 +46,7 @@ class RuleHistory:
     on_record : quarters that were looked at
     outcomes : recorded triggers, by quarter
     reviews : latest review of each quarter
+    decisions : in the order they were entered
     """
 
     first_day: str | None = None
@@ -43,13 +55,14 @@ class RuleHistory:
     on_record: set[str] = field(default_factory=set)
     outcomes: dict[str, list[Trigger]] = field(default_factory=dict)
     reviews: dict[str, Mapping[str, Any]] = field(default_factory=dict)
+    decisions: list[Decision] = field(default_factory=list)
 
 
 @dataclass
 class History:
     """What the ledger says of all rules, and the online procedure's tests in their order.
 
-    ``hunted``: quarters whose window was hunted.
+    ``hunted``: quarters whose window was hunted; ``last_reviewed``: the latest quarter of a review.
     """
 
     rules: dict[str, RuleHistory] = field(default_factory=dict)
@@ -58,6 +71,7 @@ class History:
     test_quarter: dict[str, str] = field(default_factory=dict)
     procedures: set[str] = field(default_factory=set)
     hunted: set[str] = field(default_factory=set)
+    last_reviewed: str = ""
 
     def of(self, rule: str) -> RuleHistory:
         """One rule's, empty where the ledger does not know it."""
@@ -89,6 +103,13 @@ def read_history(entries: Iterable[Entry], quarter: str) -> History:
         if entry.kind == "rule":
             mine.said = entry.body
             mine.adopted = mine.adopted or entry.body.get("adopted")
+        if entry.kind == "decision":
+            mine.decisions.append(
+                Decision(entry.quarter or "", entry.body["before"], entry.body["after"],
+                         entry.who, entry.stamp[:10])
+            )  # fmt: skip
+        if entry.kind == "review":
+            history.last_reviewed = max(history.last_reviewed, entry.quarter or "")
         if entry.quarter is None or entry.quarter > quarter:
             continue
         if entry.kind == "outcome":

@@ -2,17 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 from miner.assemble import Inputs
-from miner.ledger import Ledger
 from miner.review.cutting import cut_inputs
 from miner.review.history import (
     PLACES,
+    History,
     adoption,
     quarter_name,
-    read_history,
     start_of,
 )
 from miner.review.moved_inputs import moved_inputs
@@ -20,6 +19,7 @@ from miner.review.new_rules import Found, hunt_window
 from miner.review.outcomes import Closed, closed_triggers
 from miner.review.quarters import Quarter, quarters_of
 from miner.review.records import MovedInputs, Trigger
+from miner.review.settling import status_then
 from miner.rule_book import BookRule, RuleBook
 from miner.workers import Progress, silent
 
@@ -33,11 +33,16 @@ class Seen:
     Attributes
     ----------
     inputs : cut at the quarter's end
+    book : with the statuses from before the quarter's own decisions and later ones
+    status_now : the book's statuses as they are
+    first_adopted : the first date from which a rule of ``rules`` counts, None without rules
     closed : triggers of each rule of ``rules``, by quarter, of ``quarters``
     """
 
     inputs: Inputs
     book: RuleBook
+    status_now: Mapping[str, str]
+    first_adopted: str | None
     rules: tuple[BookRule, ...]
     quarter: Quarter
     quarters: tuple[Quarter, ...]
@@ -50,17 +55,19 @@ def look(
     inputs: Inputs,
     book: RuleBook,
     quarter: Quarter,
-    ledger: Ledger,
+    history: History,
     with_hunt: bool,
     n_workers: int,
     progress: Progress = silent,
 ) -> Seen:
     """Compute what takes time: outcomes since adoption, moved inputs, the window's hunt."""
     early = cut_inputs(inputs, quarter.last + 1)
-    history = read_history(ledger.entries(kinds=("rule", "hypothesis")), quarter.name)
+    status_now = {rule.id: rule.status for rule in book.rule}
+    book = _as_it_was(book, history, quarter.name)
     rules = book.rules_with(TESTED)
     begin = start_of(quarter.name)
-    first = min((adoption(rule, book, history.of(rule.id), begin) for rule in rules), default=begin)
+    adopted = [adoption(rule, book, history.of(rule.id), begin) for rule in rules]
+    first = min(adopted, default=begin)
     quarters = tuple(
         q
         for q in quarters_of(early.calendar.dates)
@@ -78,9 +85,21 @@ def look(
     progress("inputs that moved")
     moved = moved_inputs(early, quarter)
     found = None
-    if with_hunt:
+    if with_hunt and quarter_name(first) <= quarter.name:
         found = hunt_window(early, book, n_workers=n_workers, progress=progress)
-    return Seen(early, book, rules, quarter, quarters, named, found, moved)
+    return Seen(
+        early, book, status_now, min(adopted, default=None), rules, quarter, quarters, named,
+        found, moved,
+    )  # fmt: skip
+
+
+def _as_it_was(book: RuleBook, history: History, quarter: str) -> RuleBook:
+    """The book with the statuses from before what was decided on a quarter and on later ones."""
+    rules = tuple(
+        rule.model_copy(update={"status": status_then(history.of(rule.id), quarter, rule.status)})
+        for rule in book.rule
+    )
+    return book.model_copy(update={"rule": rules})
 
 
 def _named(inputs: Inputs, closed: Closed, quarters: Sequence[Quarter]) -> dict[str, list[Trigger]]:

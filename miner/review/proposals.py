@@ -51,7 +51,7 @@ def propose(
                 f"evidence that the promise is broken had reached {number(broken.e_highest)} by "
                 f"{broken.highest_quarter} and is {number(e)} now"
             )
-    if has_no_lift:
+    if has_no_lift and status != "too early":
         reasons.append(_no_lift(weighed.last_year))
     if status == "keep":
         reasons.insert(0, _kept(weighed, keep_above))
@@ -91,9 +91,11 @@ def _no_lift(year: Span) -> str:
         if year.first_quarter == year.last_quarter
         else f"{year.first_quarter} to {year.last_quarter}"
     )
+    is_below = (year.high or 0.0) < year.expected_hits / year.triggers
+    verdict = "worse than" if is_below else "not yet shown to be better than"
     return (
-        f"{year.hits} of {year.triggers} triggers hit in {stretch}, interval {low} to {high}: no "
-        f"better than the {expected} expected"
+        f"{year.hits} of {year.triggers} triggers hit in {stretch}, interval {low} to {high}: "
+        f"{verdict} the {expected} expected"
     )
 
 
@@ -124,8 +126,8 @@ def percent(share: float) -> str:
 
 def number(e: float) -> str:
     """Evidence in words: two digits are more than it deserves."""
-    if e >= 1e4:
-        return f"{e:.0e}"
+    if e >= 1000:
+        return "over 1,000"
     return f"{e:.0f}" if e >= 10 else f"{e:.1f}" if e >= 0.1 else f"{e:.0e}" if e else "0"
 
 

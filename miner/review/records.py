@@ -140,6 +140,7 @@ class RuleReview:
         closed triggers whose group could still grow and is not in the evidence yet
     status, reasons : the proposal, with its reasons in words, the deciding one first
     marks : how alerts of the rule are not what they were, in words; empty if they are
+    settled : why the proposal is not carried out, accepted or not, in words; empty if it can be
     """
 
     id: str
@@ -171,6 +172,7 @@ class RuleReview:
     evidence: tuple[EvidencePoint, ...]
     triggers: tuple[Trigger, ...]
     revisions: tuple[Revision, ...]
+    settled: str = ""
 
 
 @dataclass(frozen=True)
@@ -358,6 +360,7 @@ class Review:
     counts : proposals by status
     entries : numbers of the first and last ledger entry this review wrote, None if none
     is_accepted : proposals were carried out
+    unrecorded : why nothing was entered in the ledger, in words; empty where it has all of this
     """
 
     study: str
@@ -385,6 +388,7 @@ class Review:
     warnings: tuple[str, ...]
     entries: tuple[int, int] | None
     is_accepted: bool
+    unrecorded: str = ""
 
     def as_dict(self) -> dict[str, Any]:
         """Everything, ready for JSON: what ``review.json`` holds."""

@@ -5,15 +5,38 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from miner.review.drafting import Draft
+from miner.review.fitting import unknown_names
 from miner.review.history import History, quarter_name
 from miner.review.looking import Seen
-from miner.review.outcomes import is_known
+from miner.review.records import RuleReview
 
 
-def remarks(seen: Seen, history: History, drafts: Sequence[Draft]) -> list[str]:
+def remarks(
+    seen: Seen,
+    history: History,
+    drafts: Sequence[Draft],
+    reviews: Sequence[RuleReview],
+    accept: bool,
+) -> list[str]:
     """Warnings of the study, and what a rule's past, its words or its tests leave open."""
     found = list(seen.inputs.study.warnings)
     settings = seen.inputs.study.review
+    for name, count in unknown_names(seen.inputs.panel, seen.rules).items():
+        rules = "a rule of the book has" if count == 1 else f"{count} rules of the book have"
+        found.append(
+            f"the study does not know the {name} by the quarter's end: {rules} no triggers."
+        )
+    if accept:
+        found += [
+            f"{one.name} ({one.stratum}) is proposed to {one.status} but was {one.settled}."
+            for one in reviews
+            if one.settled.startswith("decided on")
+        ]
+        if history.last_reviewed > seen.quarter.name:
+            found.append(
+                f"{history.last_reviewed} was reviewed already: what is accepted here rests on an "
+                "older quarter."
+            )
     for rule, draft in zip(seen.rules, drafts, strict=True):
         mine = history.of(rule.id)
         if rule.run is None and mine.adopted is None:
@@ -21,11 +44,6 @@ def remarks(seen: Seen, history: History, drafts: Sequence[Draft]) -> list[str]:
                 f"{rule.name} ({rule.stratum}) was written by hand: its triggers count from "
                 f"{draft.adopted} on. If it was written with that quarter's data in view, they "
                 "are no test of it."
-            )
-        if not is_known(seen.inputs.panel, rule):
-            found.append(
-                f"{rule.name} -> {rule.target} ({rule.stratum}): the study does not know all of "
-                "its alert types, its target and its stratum; it has no triggers."
             )
         if mine.said is not None and mine.said.get("promise") != rule.precision:
             found.append(

@@ -76,6 +76,7 @@ def tables(review: Review) -> dict[str, pd.DataFrame]:
 
 RULE_COLUMNS = [
     "rule", "combination", "target", "stratum", "status_before", "proposed", "status_after",
+    "settled",
     "reasons", "adopted", "promise", "keep_above",
     *(f"{stretch}_{key}" for stretch in ("quarter", "year", "since") for key in SPANS),
     *(f"{kind}_{key}" for kind in ("works", "broken")
@@ -95,6 +96,7 @@ def rule_row(rule: RuleReview) -> dict[str, Any]:
         "status_before": rule.status_before,
         "proposed": rule.status,
         "status_after": rule.status_after,
+        "settled": rule.settled,
         "reasons": "; ".join(rule.reasons),
         "adopted": rule.adopted,
         "promise": rule.promise,

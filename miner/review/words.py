@@ -6,7 +6,7 @@ import textwrap
 from collections.abc import Iterator
 
 from miner.columns import POOLED
-from miner.review.proposals import number, percent
+from miner.review.proposals import BOOK_STATUS, number, percent
 from miner.review.records import Review, RuleReview, Span
 
 WIDTH = 100
@@ -24,12 +24,13 @@ def review_lines(review: Review) -> Iterator[str]:
     yield _wrapped(
         f"{review.book}, {review.quarter} ({review.first} to {review.last}): "
         f"{len(review.rules)} rule{'s' * (len(review.rules) != 1)} reviewed, "
-        f"{len(review.retired)} retired"
+        f"{len(review.retired)} retired earlier"
     )
     yield ""
     counts = [f"{n} {status}" for status, n in review.counts.items() if n]
-    verb = "Carried out" if review.is_accepted else "Proposed"
-    yield _entry(verb, ", ".join(counts) or "nothing")
+    yield _entry("Proposed", ", ".join(counts) or "nothing")
+    if review.is_accepted:
+        yield _entry("Carried out", _carried_out(review))
     yield from _ledger_text(review)
     yield from _workload_text(review)
     if review.rules:
@@ -58,20 +59,33 @@ def review_lines(review: Review) -> Iterator[str]:
 
 
 def _ledger_text(review: Review) -> Iterator[str]:
-    if review.entries is None:
-        yield _entry("Ledger", f"{review.ledger} had all of this already")
+    if review.unrecorded:
+        yield _entry("Ledger", review.unrecorded)
+    elif review.entries is None:
+        yield _entry("Ledger", f"nothing new: {review.ledger} had all of this already")
     else:
         first, last = review.entries
-        yield _entry("Ledger", f"entries {first} to {last} of {review.ledger}")
+        count = last - first + 1
+        yield _entry(
+            "Ledger",
+            f"{count:,} {'entry' if count == 1 else 'entries'} recorded in {review.ledger} "
+            f"({first} to {last}); the first record of a quarter stands",
+        )
     if not review.is_accepted:
-        changed = [rule for rule in review.rules if rule.status in _DONE and
-                   _DONE[rule.status] != rule.status_before]  # fmt: skip
+        changed = [rule for rule in review.rules if rule.status in BOOK_STATUS and not rule.settled
+                   and BOOK_STATUS[rule.status] != rule.status_before]  # fmt: skip
         if changed:
-            names = ", ".join(f"{rule.id} {_DONE[rule.status]}" for rule in changed)
+            names = ", ".join(f"{rule.id} {BOOK_STATUS[rule.status]}" for rule in changed)
             yield _entry("", f"--accept would set: {names}")
 
 
-_DONE = {"retire": "retired", "watch": "watch", "keep": "live"}
+def _carried_out(review: Review) -> str:
+    changed = [one for one in review.rules if one.status_after != one.status_before]
+    done = [f"{one.id} {one.status_after}" for one in changed if not one.settled]
+    if done:
+        return ", ".join(done)
+    stands = dict.fromkeys(one.settled for one in review.rules if one.settled)
+    return ": ".join(["nothing to carry out", *(["; ".join(stands)] if stands else [])])
 
 
 def _workload_text(review: Review) -> Iterator[str]:
@@ -107,17 +121,22 @@ def _rule_text(rule: RuleReview) -> Iterator[str]:
                 _share(since.precision),
                 _interval(since),
                 expected,
-                number(rule.works.e),
-                "-" if rule.broken is None else number(rule.broken.e),
+                _evidence(rule.works.e),
+                "-" if rule.broken is None else _evidence(rule.broken.e),
             ),
         )
     indent = " " * 14
     promise = "" if rule.promise is None else f"promise {percent(rule.promise)}; "
-    yield _wrapped(promise + "; ".join(rule.reasons), indent, indent)
+    told = [*rule.reasons, *([rule.settled] if rule.settled else [])]
+    yield _wrapped(promise + "; ".join(told), indent, indent)
 
 
 def _share(share: float | None) -> str:
     return "-" if share is None else percent(share)
+
+
+def _evidence(e: float) -> str:
+    return number(e).replace("over ", ">")
 
 
 def _interval(span: Span) -> str:

@@ -86,6 +86,21 @@ def test_a_rules_life_is_shown(filled):
     assert "Did you mean `rule-" in refused(ledger("show", filled, "rule-3"))
 
 
+def test_the_beginning_of_an_id_is_enough_where_no_other_begins_so(tmp_path, decision):
+    with open_ledger(tmp_path / "x.db") as opened:
+        opened.append([decision("abc1"), decision("abd2")], who="Ann", why="x")
+    assert said(ledger("show", tmp_path / "x.db", "abd")).startswith("Rule abd2\n")
+    assert "Several begin so: abc1, abd2." in refused(ledger("show", tmp_path / "x.db", "ab"))
+
+
+def test_an_empty_file_is_said_to_be_one(tmp_path):
+    (tmp_path / "x.db").touch()
+    for command in ("list", "verify"):
+        assert "must hold a ledger; got an empty file" in refused(
+            ledger(command, tmp_path / "x.db")
+        )
+
+
 def test_names_cannot_steer_the_terminal(tmp_path, decision):
     with open_ledger(tmp_path / "x.db") as opened:
         opened.append([decision("\x1b[2Jr")], who="\x1b]0;x\a", why="\x1b[31m")

@@ -29,7 +29,7 @@ def run(desk: Desk, *options: str):
 def test_the_screen_and_the_folder(desk):
     result = run(desk, "--quarter", "2021q3", "--who", "ida", "--workers", "1")
     assert result.exit_code == 0, result.output
-    assert "rules.toml, 2021Q3 (2021-07-01 to 2021-09-30): 2 rules reviewed, 1 retired" in (
+    assert "rules.toml, 2021Q3 (2021-07-01 to 2021-09-30): 2 rules reviewed, 1 retired earlier" in (
         result.output
     )
     for words in ("Proposed", "a + b -> upset, live", "Hunt again", "Inputs", "Research, not"):

@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+import sqlite3
+from contextlib import closing
 from dataclasses import replace
 from typing import Any
 
 import pytest
 
+from miner.errors import LedgerError, SettingsError
 from miner.ledger import open_ledger
 from miner.review import Review
 from miner.review.engine import set_statuses
+from miner.review.words import review_lines
 from miner.rule_book import read_rule_book, write_rule_book
 from tests.review.desk import Desk, make_desk, rule, session, small_world
 
@@ -35,6 +39,11 @@ def numbers(result: Review) -> dict[str, Any]:
         for line in one["quarters"]:
             line.pop("source")
     return said
+
+
+def flat(result: Review) -> str:
+    """The screen of a review, a line a sentence."""
+    return "\n".join(review_lines(result)).replace("\n              ", " ")
 
 
 def test_a_second_review_of_a_quarter_adds_nothing(desk):
@@ -63,6 +72,36 @@ def test_an_old_quarter_is_reviewed_as_it_would_have_been_then(desk, tmp_path):
     then = desk.review("2021Q2", ledger=tmp_path / "other.sqlite")
     desk.review("2021Q4")
     assert numbers(desk.review("2021Q2")) == numbers(then)
+
+
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        (
+            "UPDATE ledger_entries SET who = 'bob' WHERE number = 2",
+            "`entry 2` must be as it was",
+        ),
+        (
+            "DELETE FROM ledger_entries WHERE number = 3",
+            "`entry 3` must be .* got missing",
+        ),
+    ],
+)
+def test_nothing_is_built_on_a_ledger_that_was_changed(desk, change, words):
+    desk.review("2021Q1")
+    before = len(entries(desk))
+    with closing(sqlite3.connect(desk.ledger)) as connection, connection:
+        triggers = connection.execute("SELECT name FROM sqlite_master WHERE type = 'trigger'")
+        for (name,) in triggers.fetchall():
+            connection.execute(f"DROP TRIGGER {name}")
+        assert connection.execute(change).rowcount == 1
+        left = connection.execute("SELECT count(*) FROM ledger_entries").fetchone()
+    with pytest.raises(LedgerError, match=words):
+        desk.review("2021Q2", output=desk.folder / "out")
+    assert not (desk.folder / "out").exists()
+    with closing(sqlite3.connect(desk.ledger)) as connection:
+        assert connection.execute("SELECT count(*) FROM ledger_entries").fetchone() == left
+    assert left[0] in (before, before - 1)
 
 
 def test_who_and_why_are_entered(desk):
@@ -136,8 +175,64 @@ def test_accepting_writes_the_decisions_and_the_book(tmp_path):
     assert (decision.who, decision.why) == ("ida", "as proposed")
     again = desk.review("2021Q4", accept=True)
     assert again.entries is None
-    assert [one.id for one in again.retired] == [rules[0].id]
-    assert len(again.rules) == 1
+    assert again.retired == ()
+    assert next((o.status_before, o.status_after) for o in again.rules) == ("live", "retired")
+    assert again.rules[0].settled.startswith("already decided by ida on 20")
+    assert "nothing to carry out: already decided by ida on" in flat(again)
+    assert "Carried out   " + rules[0].id + " retired" in flat(done)
+    assert "--accept would set" not in flat(desk.review("2021Q4"))
+    following = desk.review("2021Q4", accept=True, ledger=tmp_path / "another.sqlite")
+    assert [one.id for one in following.retired] == [rules[0].id]
+
+
+def test_an_older_quarter_does_not_undo_what_a_later_one_decided(tmp_path):
+    rules = [rule("a", "b"), rule("c")]
+    desk = make_desk(tmp_path, small_world(4, hold=0.05), rules, min_triggers=5)
+    late = desk.review("2021Q4", accept=True, who="ida")
+    assert late.rules[1].status_after == "retired"
+    decisions = entries(desk, "decision")
+    early = desk.review("2021Q1", accept=True, who="bob")
+    pair = early.rules[1]
+    assert (pair.status_before, pair.status) == ("live", "watch")
+    assert pair.settled == "decided on 2021Q4 already: left as it is"
+    assert any("decided on 2021Q4 already" in warning for warning in early.warnings)
+    assert any("2021Q4 was reviewed already" in warning for warning in early.warnings)
+    assert read_rule_book(desk.book).rule[1].status == "retired"
+    assert [e for e in entries(desk, "decision") if e.rule == pair.id] == decisions[1:]
+
+
+def test_a_dry_run_enters_nothing(desk):
+    dry = desk.review("2021Q2", dry_run=True)
+    assert not desk.ledger.exists()
+    assert dry.unrecorded == "a dry run: nothing recorded"
+    assert "Ledger        a dry run: nothing recorded" in flat(dry)
+    wet = desk.review("2021Q2")
+    assert dry.rules == wet.rules
+    before = entries(desk)
+    assert f"{len(before)} entries recorded in" in flat(wet)
+    assert desk.review("2021Q3", dry_run=True, with_hunt=True).hunt is not None
+    assert entries(desk) == before
+    with pytest.raises(SettingsError, match="either accepted or a dry run"):
+        desk.review("2021Q3", dry_run=True, accept=True)
+
+
+def test_before_any_adoption_nothing_is_entered(tmp_path):
+    desk = make_desk(tmp_path, small_world(5), [rule("a", "b")], held_to="2021-06-30")
+    early = desk.review("2021Q2", with_hunt=True, accept=True)
+    assert early.entries is None
+    assert early.hunt is None
+    assert "no rule of the book was adopted yet (first: 2021-07-01)" in flat(early)
+    assert entries(desk) == []
+    assert desk.review("2021Q3").entries is not None
+
+
+def test_a_study_that_no_rule_fits_is_refused(tmp_path):
+    rules = [rule("a", "kite", target="merger"), rule("a", "kite")]
+    desk = make_desk(tmp_path, small_world(5), rules)
+    with pytest.raises(SettingsError) as error:
+        desk.review("2021Q2")
+    assert 'does not know target "merger", alert type "kite"' in str(error.value)
+    assert not desk.ledger.exists()
 
 
 def test_a_status_that_people_changed_meanwhile_is_theirs(desk):
@@ -194,7 +289,8 @@ def test_a_rule_of_what_the_study_does_not_know_has_no_triggers(tmp_path):
     lost = result.rules[0]
     assert (lost.since.triggers, lost.status) == (0, "too early")
     assert "no such type is not in the log" in lost.marks
-    assert any("does not know all of" in warning for warning in result.warnings)
+    words = 'the study does not know the alert type "no such type" by the quarter\'s end'
+    assert sum(words in warning for warning in result.warnings) == 1
     assert result.rules[1].since.triggers > 0
 
 

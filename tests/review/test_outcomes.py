@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from functools import cache
+from types import SimpleNamespace
 
 import naive
 import numpy as np
 import pytest
 
+from miner.review.drafting import ALONE, Draft, in_book
 from miner.review.records import RuleReview
 from miner.sequential.clusters import hang_together
 from miner.sequential.evidence import e_process
@@ -154,6 +157,36 @@ def test_proposals_follow_from_the_numbers(reviewed):
         status: sum(one.status == status for one in result.rules)
         for status in ("retire", "watch", "keep", "too early")
     }
+
+
+def test_what_an_interval_shows_and_what_does_not_stand_are_told(reviewed):
+    _, _, result = reviewed
+    for one in result.rules:
+        told, year = " ".join(one.reasons), one.last_year
+        expected = year.expected_hits / year.triggers
+        is_told = one.status != "too early" and year.low <= expected
+        assert ("not yet shown to be better than the" in told) == (
+            is_told and year.high >= expected
+        )
+        assert ("worse than the" in told) == (is_told and year.high < expected)
+        alone = one.status == "retire" and not one.broken.in_book
+        assert (ALONE in one.reasons) == alone
+
+
+def test_a_retirement_that_is_one_rules_alone_says_so(reviewed):
+    _, _, result = reviewed
+    pair = result.rules[0]
+    drafts = [
+        Draft(replace(pair, id=name, status="retire"), SimpleNamespace(
+            log_works=0.0, log_broken=np.log(e)), pair.adopted, ())
+        for name, e in (("a", 30.0), ("b", 1.0))
+    ]  # fmt: skip
+    first, _ = in_book([draft.review for draft in drafts], drafts, 0.05)
+    assert not first.broken.in_book
+    assert ALONE in first.reasons
+    (single,) = in_book([drafts[0].review], drafts[:1], 0.05)
+    assert single.broken.in_book
+    assert ALONE not in single.reasons
 
 
 def test_without_a_promise_none_is_tested(reviewed):
