@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 import hashlib
 import re
+import sqlite3
 import uuid
 from collections.abc import Callable, Iterator, Sequence
 from decimal import Decimal
@@ -25,6 +26,7 @@ _READ_ONLY = {
     "sqlite": ("PRAGMA query_only = ON",),
     "postgresql": ("SET default_transaction_read_only = on", "SET TRANSACTION READ ONLY"),
 }
+_ATTACH = 24  # the action code SQLITE_ATTACH of SQLite's C interface
 _WRITES = re.compile("readonly database|read-only transaction")
 
 
@@ -45,6 +47,13 @@ class RowsHash:
     def hexdigest(self) -> str:
         """Return the fingerprint of the rows so far."""
         return f"{self._total % 2**256:064x}"
+
+
+def _refuse_other_files(connection: Any) -> None:
+    """An attached database would be made where there is none, even by a query that only reads."""
+    connection.set_authorizer(
+        lambda action, *_: sqlite3.SQLITE_DENY if action == _ATTACH else sqlite3.SQLITE_OK
+    )
 
 
 def read_query(
@@ -70,6 +79,8 @@ def read_query(
         with engine.connect() as connection:
             for statement in _READ_ONLY.get(url.get_backend_name(), ()):
                 connection.exec_driver_sql(statement)
+            if url.get_backend_name() == "sqlite":
+                _refuse_other_files(connection.connection.driver_connection)
             connection.execution_options(**options)  # from here on rows are streamed
             result = connection.exec_driver_sql(settings.query or "")
             if not result.returns_rows:
