@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import tempfile
 from pathlib import Path
 
 import openpyxl
@@ -16,7 +17,7 @@ from tests.faults.studies import small_study
 
 EVIL = (
     "../../escaped",
-    "/tmp/escaped",
+    f"{tempfile.gettempdir()}/escaped",
     '<script>alert("x")</script>',
     '=HYPERLINK("http://x","y")',
     "</style><img src=x onerror=alert(1)>",
@@ -59,7 +60,7 @@ def tree(folder: Path) -> set[str]:
 
 def test_nothing_is_written_outside_the_output_folder(run_folder: Path):
     assert all("escaped" not in path.name for path in run_folder.rglob("*"))
-    assert not Path("/tmp/escaped").exists()
+    assert not Path(EVIL[1]).exists()
     assert len(list(run_folder.iterdir())) >= 9
 
 
