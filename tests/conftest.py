@@ -3,6 +3,7 @@
 from collections.abc import Callable
 
 import pytest
+from browser_pages import chromium, opened
 from hypothesis import settings
 from worlds import make_world, write_world
 
@@ -11,6 +12,8 @@ from miner.assemble import assemble
 from miner.search import cases_of
 from miner.time_split import discovery_slice
 from miner.units import Case
+
+__all__ = ["case_of", "chromium", "opened"]
 
 settings.register_profile("steady", derandomize=True, deadline=None, max_examples=40)
 settings.load_profile("steady")

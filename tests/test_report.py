@@ -1,14 +1,13 @@
 """The report from a run's folder: words, files, hostile names; the page in a browser."""
 
-import base64
-import hashlib
 import re
 import shutil
-from pathlib import Path
 from zipfile import ZipFile
 
 import openpyxl
 import pytest
+from axe_playwright_python.sync_playwright import Axe
+from browser_pages import assert_own_parts_only
 from report_fixtures import HOSTILE, RLO, made_up_run, write_json
 
 from miner.columns import CANDIDATE_COLUMNS
@@ -16,18 +15,6 @@ from miner.errors import OutputError
 from miner.report import render, render_into, words
 from miner.report.read_run import read_run
 from miner.report.svg import Plot, ticks
-
-CHROMIUM = shutil.which("chromium") or "/usr/bin/chromium"
-FLAGS = (
-    "--headless",
-    "--no-sandbox",
-    "--disable-gpu",
-    "--disable-quic",
-    "--no-first-run",
-    "--disable-background-networking",
-    "--disable-component-update",
-    "--disable-sync",
-)
 
 
 def text_of(path):
@@ -154,15 +141,7 @@ def test_what_explained_a_candidate_is_linked_within_and_across_strata(plain):
 
 def test_the_policy_lets_only_the_pages_own_style_and_script_pass(plain):
     page = text_of(plain)
-    policy = re.search(r'Content-Security-Policy" content="([^"]+)"', page).group(1)
-    policy = policy.replace("&#39;", "'")
-    assert "default-src 'none'" in policy
-    for tag in ("style", "script"):
-        (inside,) = re.findall(rf"<{tag}>(.*?)</{tag}>", page, re.S)
-        digest = base64.b64encode(hashlib.sha256(inside.encode()).digest()).decode()
-        assert f"{tag}-src 'sha256-{digest}'" in policy
-    assert not re.search(r"<[^>]+\s(on\w+|style)\s*=", page)
-    assert not re.search(r"(?:src|href)=\"?(?:https?:|//)", page)
+    assert_own_parts_only(page)
 
 
 def test_the_page_is_the_same_each_time_and_small(tmp_path):
@@ -235,44 +214,6 @@ def test_the_workbook_holds_every_value_and_nothing_that_runs(hostile):
 # --- in a browser --------------------------------------------------------------------------------
 
 
-@pytest.fixture(scope="module")
-def chromium():
-    """A headless browser."""
-    from playwright import sync_api
-
-    assert Path(CHROMIUM).exists(), "-m browser needs Debian's chromium"
-    with sync_api.sync_playwright() as playwright:
-        browser = playwright.chromium.launch(executable_path=CHROMIUM, args=list(FLAGS))
-        yield browser
-        browser.close()
-
-
-@pytest.fixture
-def opened(chromium):
-    """Opens a page offline and fails the test if it asked for anything or said anything."""
-    contexts, said, asked = [], [], []
-
-    def open_page(path, width=1440, scheme="light"):
-        context = chromium.new_context(
-            viewport={"width": width, "height": 900}, color_scheme=scheme, offline=True
-        )
-        contexts.append(context)
-        page = context.new_page()
-        page.on("console", lambda message: said.append(message.text))
-        page.on("pageerror", lambda error: said.append(str(error)))
-        page.on("dialog", lambda dialog: said.append(dialog.message))
-        page.on("request", lambda request: asked.append(request.url))
-        page.goto(path.as_uri())
-        return page
-
-    yield open_page
-    for context in contexts:
-        context.close()
-    assert said == []
-    assert contexts
-    assert all(url.startswith("file:") and url.endswith("report.html") for url in asked), asked
-
-
 def shown(page):
     return page.locator("#candidates-table tbody tr:visible")
 
@@ -338,7 +279,7 @@ def test_the_table_filters_by_words_and_choices(plain, opened):
 @pytest.mark.parametrize("width", [390, 1440])
 @pytest.mark.parametrize("which", ["plain", "hostile"])
 def test_no_sideways_scroll_and_no_fault_for_who_cannot_see(which, width, scheme, opened, request):
-    axe = pytest.importorskip("axe_playwright_python.sync_playwright").Axe()
+    axe = Axe()
     page = opened(request.getfixturevalue(which), width, scheme)
     assert page.evaluate("document.documentElement.scrollWidth") == width
     found = axe.run(page)

@@ -1,10 +1,9 @@
 """The page of a review in a browser: offline, on a phone and a desk, by keyboard, on paper."""
 
 import re
-import shutil
-from pathlib import Path
 
 import pytest
+from axe_playwright_python.sync_playwright import Axe
 from report_fixtures import HOSTILE
 from review_fixtures import made_up_review, nothing_to_say
 
@@ -13,17 +12,6 @@ from miner.review.folder import write
 
 pytestmark = pytest.mark.browser
 
-CHROMIUM = shutil.which("chromium") or "/usr/bin/chromium"
-FLAGS = (
-    "--headless",
-    "--no-sandbox",
-    "--disable-gpu",
-    "--disable-quic",
-    "--no-first-run",
-    "--disable-background-networking",
-    "--disable-component-update",
-    "--disable-sync",
-)
 REVIEWS = {
     "plain": lambda: made_up_review(8),
     "many": lambda: made_up_review(200, statuses=("keep", "keep", "watch", "retire")),
@@ -49,44 +37,6 @@ def page_of(tmp_path_factory):
     return path
 
 
-@pytest.fixture(scope="module")
-def chromium():
-    """A headless browser."""
-    from playwright import sync_api
-
-    assert Path(CHROMIUM).exists(), "-m browser needs Debian's chromium"
-    with sync_api.sync_playwright() as playwright:
-        browser = playwright.chromium.launch(executable_path=CHROMIUM, args=list(FLAGS))
-        yield browser
-        browser.close()
-
-
-@pytest.fixture
-def opened(chromium, page_of):
-    """Opens a page offline and fails the test if it asked for anything or said anything."""
-    contexts, said, asked = [], [], []
-
-    def open_page(which, width=1440, scheme="light"):
-        context = chromium.new_context(
-            viewport={"width": width, "height": 900}, color_scheme=scheme, offline=True
-        )
-        contexts.append(context)
-        page = context.new_page()
-        page.on("console", lambda message: said.append(message.text))
-        page.on("pageerror", lambda error: said.append(str(error)))
-        page.on("dialog", lambda dialog: said.append(dialog.message))
-        page.on("request", lambda request: asked.append(request.url))
-        page.goto(page_of(which).as_uri())
-        return page
-
-    yield open_page
-    for context in contexts:
-        context.close()
-    assert said == []
-    assert contexts
-    assert all(url.startswith("file:") and url.endswith("review.html") for url in asked), asked
-
-
 def shown(page):
     return page.locator("#rules tbody tr:visible")
 
@@ -94,17 +44,17 @@ def shown(page):
 @pytest.mark.parametrize("scheme", ["light", "dark"])
 @pytest.mark.parametrize("width", [390, 1440])
 @pytest.mark.parametrize("which", ["plain", "quiet", "hostile"])
-def test_no_sideways_scroll_and_no_fault_for_who_cannot_see(which, width, scheme, opened):
-    axe = pytest.importorskip("axe_playwright_python.sync_playwright").Axe()
-    page = opened(which, width, scheme)
+def test_no_sideways_scroll_and_no_fault_for_who_cannot_see(which, width, scheme, page_of, opened):
+    axe = Axe()
+    page = opened(page_of(which), width, scheme)
     assert page.evaluate("document.documentElement.scrollWidth") == width
     found = axe.run(page)
     assert found.violations_count == 0, found.generate_report()
     assert page.locator("svg[role=img]").count() > (0 if which == "quiet" else 40) - 1
 
 
-def test_a_book_of_many_rules_is_found_through_by_words_and_proposal(opened):
-    page = opened("many")
+def test_a_book_of_many_rules_is_found_through_by_words_and_proposal(page_of, opened):
+    page = opened(page_of("many"))
     assert page.evaluate("document.documentElement.scrollWidth") == 1440
     assert page.locator("#shown").inner_text() == "200 of 200 shown"
     page.locator("#filters select").select_option("watch")
@@ -114,8 +64,8 @@ def test_a_book_of_many_rules_is_found_through_by_words_and_proposal(opened):
     assert "alerts changed" in shown(page).first.inner_text()
 
 
-def test_the_book_sorts_by_its_numbers(opened):
-    page = opened("many")
+def test_the_book_sorts_by_its_numbers(page_of, opened):
+    page = opened(page_of("many"))
     for title in ("Promise broken", "Since adoption", "This quarter"):
         page.locator("#rules").get_by_role("button", name=title, exact=True).click()
         heads = page.locator("#rules thead th").all_inner_texts()
@@ -130,8 +80,8 @@ def test_the_book_sorts_by_its_numbers(opened):
         assert values == sorted(values)
 
 
-def test_it_is_used_with_the_keyboard_alone(opened):
-    page = opened("many")
+def test_it_is_used_with_the_keyboard_alone(page_of, opened):
+    page = opened(page_of("many"))
     page.keyboard.press("Tab")
     assert page.evaluate("document.activeElement.textContent") == "Skip to the answer"
     page.keyboard.press("Enter")
@@ -142,16 +92,16 @@ def test_it_is_used_with_the_keyboard_alone(opened):
     assert page.locator("details.folded article.card").first.is_visible()
 
 
-def test_a_link_to_a_folded_rule_opens_it(opened):
-    page = opened("many")
+def test_a_link_to_a_folded_rule_opens_it(page_of, opened):
+    page = opened(page_of("many"))
     link = page.locator("#rules tbody tr").last.locator("a").first
     place = link.get_attribute("href")
     link.click()
     assert page.locator(place).is_visible()
 
 
-def test_it_prints_on_white_whatever_the_screen(opened, tmp_path):
-    page = opened("plain", scheme="dark")
+def test_it_prints_on_white_whatever_the_screen(page_of, opened, tmp_path):
+    page = opened(page_of("plain"), scheme="dark")
     page.emulate_media(media="print", color_scheme="dark")
     colours = page.evaluate("getComputedStyle(document.documentElement).backgroundColor")
     assert colours == "rgb(255, 255, 255)"
@@ -162,8 +112,8 @@ def test_it_prints_on_white_whatever_the_screen(opened, tmp_path):
     assert 5 < len(re.findall(rb"/Type\s*/Page\b", pdf)) < 30
 
 
-def test_hostile_names_stay_text_and_in_their_place(opened):
-    page = opened("hostile")
+def test_hostile_names_stay_text_and_in_their_place(page_of, opened):
+    page = opened(page_of("hostile"))
     told = " ".join(page.evaluate("document.body.textContent").split())
     for name in HOSTILE:
         assert " ".join(name.split()) in told
