@@ -49,11 +49,6 @@ class Evidence:
     n_triggers_q: np.ndarray
 
     @property
-    def e_c(self) -> np.ndarray:
-        """The process after each cluster, cut off at e^690."""
-        return np.exp(np.minimum(self.log_e_c, LARGEST))
-
-    @property
     def e_q(self) -> np.ndarray:
         """The process after each quarter, cut off at e^690."""
         return np.exp(np.minimum(self.log_e_q, LARGEST))
